@@ -17,7 +17,8 @@ import tomllib
 from collections.abc import Mapping
 from dataclasses import MISSING, dataclass, field, fields, is_dataclass
 from functools import cache
-from math import inf, isnan
+from itertools import pairwise
+from math import inf, isnan, nan
 from numbers import Integral, Real
 from pathlib import Path
 from types import MappingProxyType
@@ -70,9 +71,9 @@ class Rule:
             return " | ".join(self.choices)
         parts = []
         if self.low > -inf:
-            parts.append(f"{'above' if self.open_low else 'at least'} {self.low:g}")
+            parts.append(f"{'above' if self.open_low else 'at least'} {self.low:.10g}")
         if self.high < inf:
-            parts.append(f"at most {self.high:g}")
+            parts.append(f"at most {self.high:.10g}")
         if self.increasing:
             parts.append("increasing")
         return ", ".join(parts)
@@ -94,16 +95,12 @@ def setting(meaning: str, *, default=MISSING, **rule) -> Any:
     return field(default=default, metadata={"rule": Rule(meaning, **rule)})
 
 
-def section(cls: type, meaning: str) -> Any:
-    """A field that is itself a settings class with defaults for all its fields: a TOML table."""
-    return field(default_factory=cls, metadata={"rule": Rule(meaning)})
-
-
 class Settings:
     """Base of the settings classes: values are checked, and brought to their declared type.
 
     Fields are ``bool``, ``int``, ``float``, ``str``, ``tuple[float, float]`` (a range, lowest
-    first), ``tuple[X, ...]`` (a list, not empty) or another settings class (made by `section`).
+    first), ``tuple[X, ...]`` (a list, not empty), made by `setting`, or another settings class
+    (a table of the file), made by ``field(default_factory=...)``.
     """
 
     __slots__ = ()
@@ -112,7 +109,7 @@ class Settings:
         for item in fields(self):
             value = _checked(
                 _types(type(self))[item.name],
-                item.metadata["rule"],
+                item.metadata.get("rule"),
                 getattr(self, item.name),
                 item.name,
             )
@@ -129,7 +126,7 @@ def _types(cls: type) -> Mapping[str, Any]:
     return MappingProxyType(get_type_hints(cls))
 
 
-def _checked(kind: Any, rule: Rule, value: Any, key: str) -> Any:
+def _checked(kind: Any, rule: Rule | None, value: Any, key: str) -> Any:
     """`value` as the type `kind`, or SettingsError."""
     if is_dataclass(kind):
         if not isinstance(value, kind):
@@ -151,10 +148,14 @@ def _checked(kind: Any, rule: Rule, value: Any, key: str) -> Any:
     if isinstance(value, bool) or not isinstance(value, Integral if kind is int else Real):
         noun = "a whole number" if kind is int else "a number"
         raise SettingsError(f"must be {noun}{unit}, got {value!r}", key=key)
-    too_low = value <= rule.low if rule.open_low else value < rule.low
-    if isnan(value) or too_low or value > rule.high:
+    try:
+        number = kind(value)
+    except OverflowError:
+        number = nan  # a whole number too large for a float
+    too_low = number <= rule.low if rule.open_low else number < rule.low
+    if isnan(number) or too_low or number > rule.high:
         raise SettingsError(f"must be {rule.valid or 'a number'}{unit}, got {value!r}", key=key)
-    return kind(value)
+    return number
 
 
 def _checked_tuple(kinds: tuple, rule: Rule, value: Any, key: str) -> tuple:
@@ -166,7 +167,7 @@ def _checked_tuple(kinds: tuple, rule: Rule, value: Any, key: str) -> tuple:
     result = tuple(_checked(kinds[0], rule, item, key) for item in value)
     if not is_list and result[0] > result[1]:
         raise SettingsError(f"must be {wanted}, lowest first, got {value!r}", key=key)
-    if rule.increasing and any(b <= a for a, b in zip(result, result[1:], strict=False)):
+    if rule.increasing and any(b <= a for a, b in pairwise(result)):
         raise SettingsError(f"must increase from value to value, got {value!r}", key=key)
     return result
 
@@ -246,12 +247,14 @@ def _from_table(cls: type[S], table: Mapping[str, Any], prefix: str) -> S:
         for key, value in table.items()
     }
     for item in fields(cls):
-        rule = item.metadata["rule"]
         if item.default is MISSING and item.default_factory is MISSING and item.name not in table:
-            needed = f" ({rule.valid})" if rule.valid else ""
-            raise SettingsError(
-                f"is missing; it must be given{needed}: {rule.meaning}", key=prefix + item.name
+            rule = item.metadata.get("rule")
+            wanted = (
+                f"a {types[item.name].__name__} table"
+                if rule is None
+                else (f"{rule.meaning} ({_valid(types[item.name], rule)})")
             )
+            raise SettingsError(f"is missing, must be given: {wanted}", key=prefix + item.name)
     try:
         return cls(**values)
     except SettingsError as error:
@@ -356,7 +359,7 @@ def _rows(cls: type[Settings], prefix: str) -> list[SettingRow]:
         if is_dataclass(kind):
             rows += _rows(kind, f"{prefix}{item.name}.")
             continue
-        rule = item.metadata["rule"]
+        rule = item.metadata.get("rule")
         default = _REQUIRED if item.default is MISSING else _toml_value(_plain(item.default))
         rows.append(
             SettingRow(prefix + item.name, default, rule.unit, _valid(kind, rule), rule.meaning)
@@ -368,12 +371,13 @@ def _valid(kind: Any, rule: Rule) -> str:
     """Type and valid values in words."""
     if rule.choices:
         return rule.valid
+    nouns = {int: "whole number", float: "number", bool: "true | false", str: "text"}
     if get_origin(kind) is tuple:
         element, last = get_args(kind)
-        noun = "list of " if last is Ellipsis else "[lowest, highest], "
+        many = f"{nouns[element]}s"
+        noun = f"list of {many}" if last is Ellipsis else f"two {many} [lowest, highest]"
     else:
-        element, noun = kind, ""
-    noun += {int: "whole number", float: "number", bool: "true | false", str: "text"}[element]
+        noun = nouns[kind]
     return f"{noun}, {rule.valid}" if rule.valid else noun
 
 
@@ -456,7 +460,7 @@ class SeaRecipe(Settings):
         high=200,
         increasing=True,
     )
-    views: SensorViews = section(SensorViews, "how sensors see the sea")
+    views: SensorViews = field(default_factory=SensorViews)
 
     def check(self) -> None:
         """Sensors are gauges, and every distance ends at a gauge that exists."""

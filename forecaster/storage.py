@@ -235,8 +235,6 @@ def _entry_name(entry: zipfile.ZipInfo, label: str) -> str:
     name = entry.filename.removesuffix(".npy")
     if name == entry.filename or not _ARRAY_NAME.fullmatch(name):
         raise InputError(f"{label}: holds {entry.filename!r}, which is not a named .npy array")
-    if entry.flag_bits & 0x1:
-        raise InputError(f"{label}: {entry.filename!r} is encrypted; it must be plain")
     if entry.compress_type not in (zipfile.ZIP_STORED, zipfile.ZIP_DEFLATED):
         raise InputError(f"{label}: {entry.filename!r} is packed by a method other than deflate")
     return name
