@@ -389,6 +389,19 @@ class SensorViews(Settings):
     """How sensors see a member's sea: each view is one record with its own imperfections."""
 
     per_sensor: int = setting("records taken at each sensor", default=1, low=1, high=1000)
+    clean_share: float = setting(
+        "share of the views that are noise-free and sampled as the sea is stored",
+        default=0.0,
+        low=0,
+        high=1,
+    )
+    record_periods: tuple[float, float] = setting(
+        "length of the record, drawn log-uniformly",
+        default=(70.0, 70.0),
+        unit="Tp",
+        low=16,
+        high=2000,
+    )
     noise: tuple[float, float] = setting(
         "standard deviation of sensor noise, drawn uniformly; [0, 0] is noise-free",
         default=(0.0, 0.0),
@@ -396,8 +409,11 @@ class SensorViews(Settings):
         low=0,
         high=0.5,
     )
-    samples_per_period: tuple[float, float] = setting(
-        "sampling of the record, drawn uniformly", default=(16.0, 16.0), unit="1/Tp", low=4, high=64
+    decimation: tuple[int, int] = setting(
+        "every how many stored samples the sensor takes one, drawn uniformly",
+        default=(1, 1),
+        low=1,
+        high=16,
     )
     quantisation: tuple[float, float] = setting(
         "step of the recorded values, drawn uniformly; 0 is none",
@@ -407,7 +423,10 @@ class SensorViews(Settings):
         high=0.2,
     )
     gap_share: float = setting(
-        "share of the samples missing, in gaps", default=0.0, low=0, high=0.1
+        "share of the samples missing, in gaps of up to half a peak period",
+        default=0.0,
+        low=0,
+        high=0.1,
     )
 
 
@@ -426,18 +445,21 @@ class SeaRecipe(Settings):
     steepness: tuple[float, float] = setting(
         "kp Hs / 2, drawn uniformly", default=(0.02, 0.15), low=0, open_low=True, high=0.2
     )
-    settling_periods: float = setting(
-        "time the sea ages before the record starts", default=30.0, unit="Tp", low=30, high=1000
+    second_system_share: float = setting(
+        "share of the seas with a second, shorter wave system", default=0.0, low=0, high=1
     )
-    record_periods: tuple[float, float] = setting(
-        "length of the record, drawn log-uniformly",
-        default=(32.0, 256.0),
+    settling_periods: tuple[float, float] = setting(
+        "time the sea ages before it is stored, drawn uniformly",
+        default=(30.0, 30.0),
         unit="Tp",
-        low=16,
-        high=2000,
+        low=10,
+        high=1000,
+    )
+    duration_periods: float = setting(
+        "time stored", default=150.0, unit="Tp", low=40, high=4000
     )
     after_periods: float = setting(
-        "time simulated after the issue time", default=64.0, unit="Tp", low=4, high=2000
+        "time kept for outcomes after the issue time", default=80.0, unit="Tp", low=4, high=2000
     )
     samples_per_period: int = setting(
         "sampling of the stored elevation, for labels", default=16, unit="1/Tp", low=16, high=128
@@ -463,7 +485,7 @@ class SeaRecipe(Settings):
     views: SensorViews = field(default_factory=SensorViews)
 
     def check(self) -> None:
-        """Sensors are gauges, and every distance ends at a gauge that exists."""
+        """Sensors are gauges, distances end at gauges, and the longest record fits."""
         if self.sensors > self.gauges:
             raise SettingsError(
                 f"must be at most the number of gauges, {self.gauges}, got {self.sensors}",
@@ -478,56 +500,39 @@ class SeaRecipe(Settings):
                     f"up to {reach:g} peak wavelengths, got {distance:g}",
                     key="distances_wavelengths",
                 )
+        room = self.duration_periods - self.after_periods
+        if self.views.record_periods[1] > room:
+            raise SettingsError(
+                f"must be at most duration_periods - after_periods = {room:g}, "
+                f"got {self.views.record_periods[1]:g}",
+                key="views.record_periods",
+            )
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class TrainSettings(Settings):
-    """How the model is fitted to an ensemble and calibrated."""
+    """How a model is fitted to ensembles and calibrated."""
 
-    root_seed: int = setting("seed of splits, bags and boosting", low=0)
-    ratios: tuple[float, float] = setting(
-        "height ratios the model answers for",
-        default=(0.6, 2.8),
-        unit="Hs",
-        low=0,
-        open_low=True,
-        high=5,
-    )
-    ratio_step: float = setting(
-        "step between the height ratios shown to the fit",
-        default=0.1,
-        unit="Hs",
-        low=0.01,
-        high=1,
-    )
-    boosting_rounds: int = setting("most trees in a bag", default=400, low=1, high=10000)
-    early_stopping_rounds: int = setting(
-        "trees without gain on unseen seas after which a bag stops", default=20, low=1, high=1000
-    )
+    root_seed: int = setting("seed of splits, thresholds and boosting", low=0)
+    boosting_rounds: int = setting("trees in a bag", default=200, low=1, high=5000)
     learning_rate: float = setting(
-        "shrinkage of each tree", default=0.05, low=0, open_low=True, high=1
+        "shrinkage of each tree", default=0.06, low=0, open_low=True, high=1
     )
-    leaves: int = setting("most leaves of a tree", default=31, low=2, high=1024)
-    samples_per_leaf: int = setting("fewest rows in a leaf", default=200, low=1, high=10**6)
-    bags: int = setting("models fitted to resampled seas", default=10, low=1, high=1000)
+    leaves: int = setting("most leaves of a tree", default=24, low=2, high=1024)
+    samples_per_leaf: int = setting("fewest rows in a leaf", default=300, low=1, high=10**6)
+    bags: int = setting("models fitted to different shares of the seas", default=4, low=2, high=50)
+    rows_per_bag: int = setting(
+        "most (interval, threshold) pairs a bag is fitted to",
+        default=1_200_000,
+        low=1000,
+        high=10**8,
+    )
+    thresholds_per_interval: int = setting(
+        "thresholds drawn for each interval", default=3, low=1, high=50
+    )
+    bag_share: float = setting(
+        "share of the fitted seas that one bag sees", default=0.8, low=0.1, high=1
+    )
     calibration_share: float = setting(
         "share of the seas kept from the fit for calibration", default=0.25, low=0.05, high=0.5
     )
-    stopping_share: float = setting(
-        "share of the seas kept from the fit for early stopping", default=0.15, low=0.05, high=0.5
-    )
-
-    def check(self) -> None:
-        """The shares kept from the fit leave seas to fit, and the ratios hold a step."""
-        if self.calibration_share + self.stopping_share > 0.8:
-            raise SettingsError(
-                "with stopping_share must leave at least 0.2 of the seas to fit, got "
-                f"{self.calibration_share:g} + {self.stopping_share:g}",
-                key="calibration_share",
-            )
-        if self.ratio_step > self.ratios[1] - self.ratios[0]:
-            raise SettingsError(
-                f"must fit between the ratios {self.ratios[0]:g} and {self.ratios[1]:g}, "
-                f"got {self.ratio_step:g}",
-                key="ratio_step",
-            )

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass, field
+from functools import cache
 
 import numpy as np
 
@@ -16,13 +17,51 @@ from forecaster.datatypes import Envelope, Record, SeaState, Spectrum, Waves
 from forecaster.learning.events import INTERVAL_PERIODS
 from forecaster.waves.envelope import FREE_BAND, elevation_of, free_envelope
 from forecaster.waves.heights import zero_crossing_waves
-from forecaster.waves.linear import group_velocity, wavenumber
+from forecaster.waves.linear import group_velocity
 from forecaster.waves.propagate import ForwardRun, phase_coherence
+from forecaster.waves.scattering import (
+    WindowedContent,
+    discrete_spectrum,
+    scaled_envelope,
+    windowed_content,
+)
 from forecaster.waves.spectrum import estimate_spectrum, noise_floor, sea_state
 
 MARGIN_PERIODS = (14.0, 0.8)  # empty time around a run: constant, and per wavelength of distance
-COVERAGE_POINTS = 5  # places within an interval at which coverage is taken
+PLACES = 12  # times within an interval at which coverage is taken
+WAVES_PER_INTERVAL = INTERVAL_PERIODS / 0.75  # Tm02 is about 0.75 Tp in wind seas
+CONTINUED_PERIODS = 0.7  # by how much the conditional mean extends what is known
+LEAST_UNKNOWN = 0.01  # share of the energy that no run knows
+REACH_LEVELS = np.arange(0.0, 3.4, 0.1)
+WINDOW_STEP_PERIODS = 2.5  # between the centres of scattering windows
 TIMING_PERIODS = 1.0  # by how much a forecast wave may miss its interval
+
+
+@cache
+def _rice_table():
+    from scipy.special import chndtr
+
+    step = 0.1
+    a, b = step * np.arange(141), step * np.arange(161)
+    return step, 1 - chndtr(b[None, :] ** 2, 2.0, a[:, None] ** 2)
+
+
+def rice_exceedance(a, b):
+    """P(R > b) of a Rician R of unit scale about `a` (Marcum's Q), by table to about 1e-3.
+
+    >>> bool(abs(rice_exceedance(0.0, 2.0) - np.exp(-2)) < 1e-3)
+    True
+    """
+    step, table = _rice_table()
+    # far out only the difference counts
+    excess = np.maximum(a - step * (table.shape[0] - 2), 0.0)
+    x = np.clip((a - excess) / step, 0, table.shape[0] - 1.001)
+    y = np.clip((b - excess) / step, 0, table.shape[1] - 1.001)
+    i, j = x.astype(int), y.astype(int)
+    u, v = x - i, y - j
+    low = (1 - v) * table[i, j] + v * table[i, j + 1]
+    high = (1 - v) * table[i + 1, j] + v * table[i + 1, j + 1]
+    return (1 - u) * low + u * high
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -35,8 +74,32 @@ class Track:
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class LookAhead:
-    """All that one record says, carried to several distances.
+class Content:
+    """Scattering spectrum of a record: of windows along it, and of the whole.
+
+    Parameters
+    ----------
+    centres : (w,) array [s]
+        Of the windows, on the record's clock.
+    windows : WindowedContent
+    eigenvalues : (m,) complex array
+        Of the whole record.
+    scale : float
+        Root mean square of q over the record: eigenvalues are told in units of it.
+    action : float
+        Integral of |q|^2 over the record's scaled time.
+    """
+
+    centres: np.ndarray
+    windows: WindowedContent
+    eigenvalues: np.ndarray
+    scale: float
+    action: float
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class FirstLook:
+    """What one record says before any run: enough for coverage and for the model's domain.
 
     Parameters
     ----------
@@ -44,25 +107,40 @@ class LookAhead:
         Cut at the issue time, free of gaps and drift.
     sea : SeaState
     spectrum : Spectrum
-    envelope : Envelope
-        Of the free waves at the sensor.
     distances : (d,) array [m]
         Increasing.
-    expected, full, linear : tuple of d Track
-        The forward run as expected wave, the same with nothing damped, and the linear run.
-    sensor : Track
-        The record itself.
     """
 
     record: Record
     sea: SeaState
     spectrum: Spectrum
-    envelope: Envelope
     distances: np.ndarray
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class LookAhead(FirstLook):
+    """All that one record says, carried to several distances.
+
+    Parameters
+    ----------
+    record, sea, spectrum, distances
+        As in `FirstLook`.
+    envelope : Envelope
+        Of the free waves at the sensor.
+    expected, full, linear : tuple of d Track
+        The forward run as expected wave, the same with nothing damped, and the linear run.
+    sensor : Track
+        The record itself.
+    content : Content
+        Scattering spectrum at the sensor.
+    """
+
+    envelope: Envelope
     expected: tuple[Track, ...]
     full: tuple[Track, ...]
     linear: tuple[Track, ...]
     sensor: Track
+    content: Content
 
 
 def _track(envelope: Envelope) -> Track:
@@ -85,6 +163,34 @@ def run_envelope(record: Record, sea: SeaState, reach: float) -> Envelope:
     )
 
 
+def scattering_content(record: Record, envelope: Envelope) -> Content:
+    """Scattering spectrum of a record's envelope, by windows and as a whole.
+
+    Raises
+    ------
+    NumericsError
+        If the eigenvalues found are not those that the argument principle counts.
+    """
+    q, step = scaled_envelope(envelope)
+    period = 2 * np.pi / envelope.omega0
+    centres = np.arange(record.start, record.end + period, WINDOW_STEP_PERIODS * period)
+    windows = windowed_content(q, step, (centres - envelope.start) * envelope.omega0)
+    inside = (envelope.times >= record.start) & (envelope.times <= record.end)
+    square = np.abs(q[inside]) ** 2
+    whole = discrete_spectrum(q, step, order=4)
+    return Content(centres, windows, whole, float(np.sqrt(square.mean())), square.sum() * step)
+
+
+def first_look(record: Record, distances, *, spread: float | None = None) -> FirstLook:
+    """Sea state and spectrum of one record; options and errors as of `look_ahead`."""
+    return FirstLook(
+        record,
+        sea_state(record.elevation, record.dt, depth=record.depth, spread=spread),
+        estimate_spectrum(record.elevation, record.dt),
+        np.atleast_1d(np.asarray(distances, float)),
+    )
+
+
 def look_ahead(record: Record, distances, *, spread: float | None = None) -> LookAhead:
     """Sea state, envelope and forward runs of one record.
 
@@ -103,20 +209,18 @@ def look_ahead(record: Record, distances, *, spread: float | None = None) -> Loo
     NumericsError
         If a forward run fails.
     """
-    distances = np.atleast_1d(np.asarray(distances, float))
-    sea = sea_state(record.elevation, record.dt, depth=record.depth, spread=spread)
-    spectrum = estimate_spectrum(record.elevation, record.dt)
-    envelope = run_envelope(record, sea, float(distances[-1]))
+    first = first_look(record, distances, spread=spread)
+    envelope = run_envelope(record, first.sea, float(first.distances[-1]))
     run = ForwardRun(envelope)
-    full = run.march(distances)
-    expected = tuple(run.expected(step, sea.steepness) for step in full)
-    linear = ForwardRun(envelope, equation="linear").march(distances)
+    full = run.march(first.distances)
+    expected = tuple(run.expected(step, first.sea.steepness) for step in full)
+    linear = ForwardRun(envelope, equation="linear").march(first.distances)
     return LookAhead(
         record=record,
-        sea=sea,
-        spectrum=spectrum,
+        sea=first.sea,
+        spectrum=first.spectrum,
+        distances=first.distances,
         envelope=envelope,
-        distances=distances,
         expected=tuple(map(_track, expected)),
         full=tuple(map(_track, full)),
         linear=tuple(map(_track, linear)),
@@ -125,6 +229,7 @@ def look_ahead(record: Record, distances, *, spread: float | None = None) -> Loo
             envelope.times,
             2 * np.abs(envelope.values),
         ),
+        content=scattering_content(record, envelope),
     )
 
 
@@ -134,14 +239,15 @@ class Scene:
 
     Parameters
     ----------
-    ahead : LookAhead
+    ahead : FirstLook
+        A `LookAhead` for everything but coverage, sea state, noise and length of the record.
     index : int
         Which distance.
     edges : (m + 1,) array [s]
         Of the intervals at the target, on the record's clock.
     """
 
-    ahead: LookAhead
+    ahead: FirstLook
     index: int
     edges: np.ndarray
     _memory: dict = field(default_factory=dict, repr=False)
@@ -196,59 +302,111 @@ class Scene:
             ]
         ) / sea.hs  # fmt: skip
 
-    def _energy_shares(self):
-        """(m,) mean coverage, least coverage, and share known in phase, per interval."""
+    def feeding_group(self) -> np.ndarray:
+        """(m,) index of the strongest scattering window that feeds each interval, -1 for none.
+
+        Windows whose centre, moved by the travel time, falls in the interval widened by
+        `TIMING_PERIODS`; the strongest has the largest Im of an eigenvalue.
+        """
+        if "group" not in self._memory:
+            content, slack = self.ahead.content, TIMING_PERIODS * self.ahead.sea.tp
+            arrival = content.centres + self.travel_time
+            inside = (arrival >= self.edges[:-1, None] - slack) & (
+                arrival < self.edges[1:, None] + slack
+            )
+            strength = np.where(inside, content.windows.largest, -1.0)
+            best = strength.argmax(axis=1)
+            self._memory["group"] = np.where(inside.any(axis=1), best, -1)
+        return self._memory["group"]
+
+    def group_value(self, name: str) -> np.ndarray:
+        """(m,) one field of the feeding group's content, 0 where no group feeds."""
+        group = self.feeding_group()
+        return np.where(group >= 0, getattr(self.ahead.content.windows, name)[group], 0.0)
+
+    def focus_nearness(self) -> np.ndarray:
+        """(m,) distance over the feeding group's focusing distance, 0 if it does not focus."""
+        focus = self.group_value("focus_distance")
+        here = self.distance * self.ahead.envelope.k0
+        ratio = here / np.where(focus > 0, focus, np.inf)
+        return np.clip(ratio, 0, 4)
+
+    def _shares(self):
+        """Places in time and, at each, shares of the energy: covered, known in phase.
+
+        Returns times (m, p) and two (m, p) arrays, 0..1.  A component is covered where it left
+        the sensor inside the record, and known in phase times its squared `phase_coherence`.
+        """
         if "shares" not in self._memory:
             ahead, sea = self.ahead, self.ahead.sea
             f = ahead.spectrum.frequency * sea.tp
             used = (f > FREE_BAND[0]) & (f < FREE_BAND[1])
             density = ahead.spectrum.density[used]
             share = density / density.sum()
-            travel = self.distance / group_velocity(
-                2 * np.pi * ahead.spectrum.frequency[used], sea.depth
-            )
-            inner = (np.arange(COVERAGE_POINTS) + 0.5) / COVERAGE_POINTS
+            omega = 2 * np.pi * ahead.spectrum.frequency[used]
+            travel = self.distance / group_velocity(omega, sea.depth)
+            inner = (np.arange(PLACES) + 0.5) / PLACES
             times = self.edges[:-1, None] + np.diff(self.edges)[:, None] * inner
             left = times[..., None] - travel
             inside = (left >= ahead.record.start) & (left <= ahead.record.end)
             coherent = phase_coherence(f[used] - 1, sea.kp * self.distance, sea.steepness) ** 2
-            covered = inside @ share
-            self._memory["shares"] = (
-                covered.mean(axis=1),
-                covered.min(axis=1),
-                (inside @ (share * coherent)).mean(axis=1),
-            )
+            continued = left <= ahead.record.end + CONTINUED_PERIODS * sea.tp
+            known = ((left >= ahead.record.start) & continued) @ (share * coherent)
+            self._memory["shares"] = times, inside @ share, known
         return self._memory["shares"]
 
     def coverage(self):
         """(m,) share of the energy that left the sensor inside the record, 0..1."""
-        return self._energy_shares()[0]
+        return self._shares()[1].mean(axis=1)
 
     def least_coverage(self):
         """(m,) the least coverage within each interval."""
-        return self._energy_shares()[1]
+        return self._shares()[1].min(axis=1)
 
     def unexplained(self):
         """(m,) share of the energy that is not covered or whose phase is lost."""
-        return 1 - self._energy_shares()[2]
+        return 1 - self._shares()[2].mean(axis=1)
+
+    def reach(self, probability: float):
+        """(m,) height [Hs] that an interval's highest wave reaches with `probability`.
+
+        As if what the expected wave does not know were Gaussian: the envelope is then Rician
+        about the expected one (Rice 1945, Bell Syst. Tech. J. 24, sec. 3.10), with `PLACES`
+        places an interval counting as `WAVES_PER_INTERVAL` independent waves.
+        """
+        if "reach" not in self._memory:
+            track = self.ahead.expected[self.index]
+            times, _, known = self._shares()
+            centre = np.interp(times, track.times, track.envelope_height) / self.ahead.sea.hs
+            spread = 0.5 * np.sqrt(np.clip(1 - known, LEAST_UNKNOWN, 1.0))
+            level = REACH_LEVELS[:, None, None]
+            below = 1 - rice_exceedance(centre / spread, level / spread)
+            log_none = np.log(np.clip(below, 1e-12, 1)).sum(axis=-1)
+            self._memory["reach"] = 1 - np.exp(log_none * (WAVES_PER_INTERVAL / PLACES))
+        exceeded = self._memory["reach"]
+        return np.array([np.interp(-probability, -row, REACH_LEVELS) for row in exceeded.T])
 
     def statistics(self) -> dict[str, float]:
-        """Skewness, excess kurtosis, groupiness and noise share of the record."""
+        """Skewness, excess kurtosis and groupiness of the record."""
         if "statistics" not in self._memory:
-            ahead, sea = self.ahead, self.ahead.sea
+            ahead = self.ahead
             z = ahead.record.elevation - ahead.record.elevation.mean()
             sigma = z.std()
             times, heights = ahead.sensor.times, ahead.sensor.envelope_height
             inside = (times >= ahead.record.start) & (times <= ahead.record.end)
             square = heights[inside] ** 2
-            white = noise_floor(ahead.spectrum, 1 / sea.tp) * ahead.spectrum.frequency[-1]
             self._memory["statistics"] = {
                 "skewness": (z**3).mean() / sigma**3,
                 "excess_kurtosis": (z**4).mean() / sigma**4 - 3,
                 "groupiness": (square**2).mean() / square.mean() ** 2,
-                "noise_share": np.sqrt(max(white, 0.0)) / sigma,
             }
         return self._memory["statistics"]
+
+    def noise_share(self) -> float:
+        """Standard deviation of white sensor noise over that of the record."""
+        elevation, spectrum = self.ahead.record.elevation, self.ahead.spectrum
+        white = noise_floor(spectrum, 1 / self.ahead.sea.tp) * spectrum.frequency[-1]
+        return np.sqrt(max(white, 0.0)) / (elevation - elevation.mean()).std()
 
 
 @dataclass(frozen=True, slots=True)
@@ -287,7 +445,21 @@ def _lead(scene):
     return (scene.edges[:-1] - scene.ahead.record.end) / scene.ahead.sea.tp
 
 
+def _group(name, power=0):
+    def value(scene):
+        return scene.group_value(name) / scene.ahead.content.scale**power
+
+    return value
+
+
+def _content(function):
+    return lambda scene: function(scene.ahead.content)
+
+
+_SCATTERING = "Zakharov-Shabat spectrum of the feeding window (waves.scattering)"
+_WHOLE = "Zakharov-Shabat spectrum of the record (waves.scattering)"
 _PAIR = "forward run with pair dispersion (waves.propagate)"
+_RICE = "expected envelope and the Gaussian rest (Rice 1945)"
 _LINEAR = "linear forward run (waves.propagate)"
 _WIDE = {"widen": TIMING_PERIODS}
 
@@ -309,7 +481,7 @@ FEATURES: dict[str, Feature] = {
         _statistic("groupiness"), "1", "<|A|^4>/<|A|^2>^2", "groupiness of the record"
     ),
     "noise_share": Feature(
-        _statistic("noise_share"), "1", "white floor of the spectrum", "sensor noise"
+        Scene.noise_share, "1", "white floor of the spectrum", "sensor noise"
     ),
     "record_periods": Feature(
         lambda scene: min(scene.ahead.record.duration / scene.ahead.sea.tp, 128.0),
@@ -376,9 +548,48 @@ FEATURES: dict[str, Feature] = {
     "linear_envelope": Feature(
         _run_envelope("linear"), "Hs", _LINEAR, "wave group of the linear run"
     ),
+    "reach_50": Feature(
+        lambda scene: scene.reach(0.5), "Hs", _RICE, "height within reach of the run"
+    ),
+    "reach_10": Feature(
+        lambda scene: scene.reach(0.1), "Hs", _RICE, "height within reach of the run"
+    ),
+    "reach_1": Feature(
+        lambda scene: scene.reach(0.01), "Hs", _RICE, "height within reach of the run"
+    ),
     "fed_envelope": Feature(
         lambda scene: scene.largest_envelope(scene.ahead.sensor, fed=True),
         "Hs", "envelope of the record", "group that left the sensor",
+    ),
+    # the scattering spectrum
+    "group_eigenvalue": Feature(
+        _group("largest", 1), "rms q", _SCATTERING, "scattering spectrum of the group"
+    ),
+    "group_speed_offset": Feature(
+        _group("largest_re", 1), "rms q", _SCATTERING, "scattering spectrum of the group"
+    ),
+    "group_eigenvalue_sum": Feature(
+        _group("sum_im", 1), "rms q", _SCATTERING, "scattering spectrum of the group"
+    ),
+    "group_soliton_share": Feature(
+        _group("energy_share"), "1", _SCATTERING, "scattering spectrum of the group"
+    ),
+    "group_chirp": Feature(
+        _group("chirp", 2), "rms q^2", "phase curvature of the group", "focusing of the group"
+    ),
+    "group_focus_nearness": Feature(
+        Scene.focus_nearness, "1", "focusing distance (waves.scattering)", "focusing of the group"
+    ),
+    "group_amplification": Feature(
+        _group("amplification"), "1", "focusing estimate", "focusing of the group"
+    ),
+    "record_eigenvalue": Feature(
+        _content(lambda c: c.eigenvalues.imag.max(initial=0.0) / c.scale),
+        "rms q", _WHOLE, "scattering spectrum of the record",
+    ),
+    "record_soliton_share": Feature(
+        _content(lambda c: 4 * c.eigenvalues.imag.sum() / c.action),
+        "1", _WHOLE, "scattering spectrum of the record",
     ),
 }  # fmt: skip
 

@@ -91,7 +91,8 @@ def sniff(head: bytes, name: str) -> bool:
     Parameters
     ----------
     head : bytes
-        First bytes of the file, decompressed.
+        First bytes of the file, decompressed; its first two lines decide, since later ones may lie
+        past the issue time.
     name : str
         File name; not used here, since text tables go by every name.
 
@@ -100,7 +101,7 @@ def sniff(head: bytes, name: str) -> bool:
     >>> sniff(b"\\x89HDF\\r\\n\\x1a\\n\\x00", "record.nc")
     False
     """
-    start = head[:4096]
+    start = b"\n".join(head[:8192].split(b"\n", 2)[:2])
     control = sum(byte < 32 and byte not in b"\t\n\r\f\v" for byte in start)
     return bool(start.strip()) and control == 0
 
@@ -249,19 +250,24 @@ def _kind(token: bytes, delimiter: bytes | None) -> str:
     return "stamp" if clock.is_stamp(text) else "text"
 
 
-def _headings(line: bytes, delimiter: bytes | None, columns: int) -> list[str] | None:
-    """Names in a heading line, or None if it does not fit `columns` fields."""
+def _headings(
+    line: bytes, delimiter: bytes | None, columns: int, *, trailing: bool
+) -> list[str] | None:
+    """Names in a heading line, or None if it does not fit `columns` fields.
+
+    `trailing`: the rows end with a delimiter, which the heading need not.
+    """
     text = _text(line.strip(b" \r") if delimiter else line.strip())
     if delimiter is not None:
         names = [name.strip() for name in text.split(delimiter.decode())]
+        if trailing and len(names) == columns - 1:
+            names.append("")
     else:
         # "eta [cm]" and "eta / cm" are one heading although they hold blanks
         glued = re.sub(r"\s+(?=[\[({])", "\v", re.sub(r"\s*/\s*", "\v/\v", text))
         names = [name.replace("\v", " ") for name in re.split(r"[ \t]+", glued)]
         if len(names) != columns:
             names = [name.strip() for name in re.split(r"\t+|\s{2,}", text)]
-    if len(names) == columns - 1 and delimiter is not None:
-        names.append("")  # rows that end with a delimiter
     return names if len(names) == columns else None
 
 
@@ -364,9 +370,10 @@ def _scale_or_nan(unit: str) -> float:
 def _fit(line: bytes, comments: list[bytes], preamble: list[bytes]):
     """Delimiter, fields, names and heading line that fit a row of numbers best, or None.
 
-    A line is a row of numbers if its first field, or most of its fields, is a number, a time or
-    missing.  Of several delimiters the one whose field count the heading shares goes first, then
-    the one that leaves no text.
+    A line is a row of numbers if its first field, or most of its fields, are a number, a time or
+    missing, or if at least two are numbers and the line above is a heading for it.  Of several
+    delimiters the one whose field count the heading shares goes first, then the one that leaves
+    no text.
     """
     best = None
     for order, delimiter in enumerate(_DELIMITERS):
@@ -376,19 +383,26 @@ def _fit(line: bytes, comments: list[bytes], preamble: list[bytes]):
         kinds = [_kind(token, delimiter) for token in fields]
         plain = [kind != "text" for kind in kinds]
         measured = [kind not in ("text", "missing") for kind in kinds]
-        if not any(measured) or not (plain[0] or sum(plain) > len(plain) / 2):
+        if not any(measured):
             continue
         names, heading = None, None
         candidates = [(row, row) for row in preamble[-2:][::-1]]
         candidates += [(row, row.lstrip(b"#%!/").strip(b" ")) for row in comments[-1:]]
         for original, candidate in candidates:
-            names = _headings(candidate, delimiter, len(fields))
+            names = _headings(candidate, delimiter, len(fields), trailing=not fields[-1])
+            if original in comments:
+                names = names or _headings(candidate, None, len(fields), trailing=False)
+                if names and not _names_a_table(names):
+                    names = None
             if names and any(_kind(n.encode(), delimiter) == "text" for n in names if n):
                 heading = original
                 break
             names = None
         if heading is not None and heading in preamble[-1:] and len(preamble) > 1:
             names, heading = _with_units_row(names, preamble, delimiter, len(fields), heading)
+        tabular = names is not None and sum(measured) >= 2
+        if not (plain[0] or sum(plain) > len(plain) / 2 or tabular):
+            continue
         rank = (names is None, not all(plain), order)
         if best is None or rank < best[0]:
             names = names or [""] * len(fields)
@@ -402,13 +416,29 @@ def _with_units_row(names, preamble, delimiter, columns, heading):
     if not all(unit in units.LENGTH_UNITS or unit in units.TIME_UNITS or not unit
                for unit in stated):  # fmt: skip
         return names, heading
-    above = _headings(preamble[-2], delimiter, columns)
+    above = _headings(preamble[-2], delimiter, columns, trailing=names[-1] == "")
     if above is None:
         return names, heading
     joined = [
         f"{name} [{unit}]" if unit else name for name, unit in zip(above, stated, strict=True)
     ]
     return joined, heading
+
+
+def _names_a_table(names: list[str]) -> bool:
+    """Whether a comment of as many words as there are columns is meant as their heading."""
+    if len(names) > 1:
+        return any(_named_time(name) for name in names)
+    bare, unit = units.split_unit(names[0])
+    return bool(unit or _words(bare) & _ELEVATION_WORDS)
+
+
+def _named_time(name: str) -> bool:
+    bare, unit = units.split_unit(name)
+    words = _words(bare)
+    if words & _ELEVATION_WORDS:
+        return False
+    return bool(words & _TIME_WORDS) or unit.split(" ")[0] in units.TIME_UNITS
 
 
 def _words(name: str) -> set[str]:
@@ -470,7 +500,7 @@ class _Columns:
         numbers = [
             i
             for i, (name, kind) in enumerate(zip(self.names, self.kinds, strict=True))
-            if kind in ("number", "missing", "text") and self._named_time(name)
+            if kind in ("number", "missing", "text") and _named_time(name)
         ]
         if len(dates) == 1 and len(clocks) == 1:
             candidates = [*stamps, dates[0], *numbers]
@@ -501,14 +531,6 @@ class _Columns:
             f"sampling rate (sampling_hz); the columns are {self._listed()}",
             path=self.path,
         )
-
-    @staticmethod
-    def _named_time(name: str) -> bool:
-        bare, unit = units.split_unit(name)
-        words = _words(bare)
-        if words & _ELEVATION_WORDS:
-            return False
-        return bool(words & _TIME_WORDS) or unit.split(" ")[0] in units.TIME_UNITS
 
     def value(self, wanted: str | None, taken: set[int | None]) -> int:
         """Column of the elevation."""

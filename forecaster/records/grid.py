@@ -149,8 +149,7 @@ def uniform(times, values, *, path, lines=None, stamp_unit=1.0, step=None) -> Gr
         if (np.diff(times) <= 0).any():
             raise RecordFormatError(
                 f"time stamps of {resolution:g} s resolution are shared by several rows and do "
-                "not fit one step: print the stamps with more digits, or give the sampling rate "
-                "and no time column",
+                "not fit one step: print the stamps with more digits",
                 path=path,
             )
         grid, start, note = _resampled(times, values, dt)
@@ -205,8 +204,8 @@ def _without_repeats(times, values, lines, path):
         row = same[conflict][0]
         raise RecordFormatError(
             f"time {times[row]:.10g} s is given twice with the values {values[row - 1]:g} and "
-            f"{values[row]:g}: remove one of the rows, or give the sampling rate and no time "
-            "column if the stamps are too coarse",
+            f"{values[row]:g}: remove one of the rows, or print the "
+            "stamps with more digits",
             path=path,
             line=int(lines[row]),
         )

@@ -27,7 +27,7 @@ from forecaster.datatypes import QualityReport, QualityTest, Record
 from forecaster.records import clock
 
 GRAVITY = 9.81  # m/s^2
-RANGE = 40.0  # m about the mean; twice the highest crests ever measured
+RANGE = 40.0  # m about the mean; about twice the highest crests known; no source
 PERCENT_GOOD = 90.0  # IOOS manual 2019, recommended
 ACCELERATION = 0.5  # of g; IOOS manual 2019, recommended upper value
 SHORTEST, SHORT = 20.0, 32.0  # peak periods
@@ -35,7 +35,7 @@ COARSEST = 4.0  # samples per peak period
 SPIKES_SHARE = 0.02  # of samples, from which the sensor and not a sample is at fault
 STEEPEST, STEEP = 0.25, 0.18  # kp Hs / 2
 FLATTEST, FLAT = 2e-4, 1e-3
-LARGEST_HS = 25.0  # m
+LARGEST_HS = 25.0  # m; common practice, no source
 _SPIKE_PASSES = 10
 
 
@@ -57,23 +57,35 @@ def _scales(record: Record) -> _Scales:
     """Peak period by fourth-power-weighted spectrum (Young 1995, Ocean Eng. 22, 669-686).
 
     Rough on purpose, and robust: gaps at zero, values beyond six robust standard deviations
-    limited, the slowest 5 harmonics (drift) left out, seven harmonics averaged.
+    limited, the slowest 5 harmonics (drift) left out, averaged over 0.15 of the mean frequency so
+    that a narrow line (an engine, a seiche) does not outdo the sea, and weighted within 40 % of
+    the highest value.
     """
-    values = np.nan_to_num(record.elevation - np.nanmedian(record.elevation))
+    frequency = np.fft.rfftfreq(record.n, record.dt)
     measured = ~np.isnan(record.elevation)
+    if not measured.any():
+        return _Scales(np.nan, 0.0, frequency, np.zeros(frequency.size))
+    values = np.nan_to_num(record.elevation - np.nanmedian(record.elevation))
     spread = 1.4826 * np.median(np.abs(values[measured]))
     if spread > 0:
         values = np.clip(values, -6 * spread, 6 * spread)
     values = np.where(measured, values - values[measured].mean(), 0.0)
     sigma = float(np.sqrt(np.mean(values[measured] ** 2)))
-    frequency = np.fft.rfftfreq(record.n, record.dt)
     if sigma == 0 or record.n < 32:
         return _Scales(np.nan, sigma, frequency, np.zeros(frequency.size))
     taper = np.sin(np.pi * (np.arange(record.n) + 0.5) / record.n)
     power = np.abs(np.fft.rfft(values / sigma * taper)) ** 2
-    density = np.convolve(power, np.ones(7) / 7, mode="same")
-    weights = (density[5:] / density[5:].max()) ** 4
-    peak = float(weights @ frequency[5:] / weights.sum())
+    fast = np.where(np.arange(power.size) < 5, 0.0, power)
+    if not fast.any():
+        return _Scales(np.nan, sigma, frequency, power)
+    waves = record.duration * float(fast @ frequency / fast.sum())
+    width = max(7, int(0.15 * waves))
+    density = np.convolve(fast, np.ones(width) / width, mode="same")[: power.size]
+    density[:5] = 0.0
+    highest = frequency[np.argmax(density)]
+    near = np.abs(frequency - highest) <= 0.4 * highest
+    weights = (density[near] / density.max()) ** 4
+    peak = float(weights @ frequency[near] / weights.sum())
     return _Scales(1 / peak, sigma, frequency, power)
 
 
@@ -205,7 +217,7 @@ def without_spikes(record: Record) -> Record:
 
 
 def remove_drift(record: Record) -> Record:
-    """The record without tide and drift: a low-order polynomial in time, if there is any.
+    """The record about its own level: tide and drift, a low-order polynomial in time, removed.
 
     Parameters
     ----------
@@ -216,12 +228,13 @@ def remove_drift(record: Record) -> Record:
     -------
     Record
         About the slowly moving mean level.  The values are those of `record`, byte for byte,
-        if the drift spans less than 2 % of Hs.
+        if the level keeps within 2 % of Hs.
 
     Notes
     -----
     Legendre polynomials of order up to 3 (one more for every 2 h beyond the first half hour, at
-    most 10; 1 if the record is shorter than 20 Tp) are fitted by weighted least squares.  The
+    most 10; 1 if the record is shorter than 20 Tp) are fitted by weighted least squares, spikes
+    left out.  The
     weights fall as a squared cosine to zero over 16 Tp (half the record if shorter) at either
     end: a plain fit would lean on the last waves and attenuate them, since (p+1)^2/n of an end
     sample goes into its own fit; with the taper the fit sees oscillations of frequency f only as
@@ -237,9 +250,8 @@ def remove_drift(record: Record) -> Record:
     >>> bool(np.abs(level.elevation - waves).max() < 0.02)
     True
     """
-    scales = _scales(record)
-    measured = ~np.isnan(record.elevation)
-    tp = scales.tp
+    tp = _scales(record).tp
+    measured = ~np.isnan(record.elevation) & ~spike_samples(record)
     if not isfinite(tp) or measured.sum() < 32:
         return record
     place = np.linspace(-1, 1, record.n)
@@ -263,11 +275,12 @@ def remove_drift(record: Record) -> Record:
         return columns @ solution
 
     best = fitted(highest)
-    waves = record.elevation - best
-    hs = 4 * float(np.nanstd(waves))
-    span = float(np.ptp(best))
-    if span < 0.02 * hs or hs == 0:
-        return record.step(f"drift below 2 % of Hs ({span:.3g} m over the record): left as it is")
+    hs = 4 * float(np.std((record.elevation - best)[measured]))
+    farthest = float(np.abs(best).max())
+    if farthest < 0.02 * hs or hs == 0:
+        return record.step(
+            f"level keeps within {farthest:.3g} m, less than 2 % of Hs: no drift removed"
+        )
     order = highest
     for lower in range(1, highest):
         trial = fitted(lower)
@@ -275,8 +288,8 @@ def remove_drift(record: Record) -> Record:
             best, order = trial, lower
             break
     return record.step(
-        f"tide and drift removed: polynomial of order {order}, {np.ptp(best):.4g} m from lowest "
-        f"to highest, {best[-1] - best[0]:+.4g} m from start to end",
+        f"level, tide and drift removed: polynomial of order {order}, {best.min():.4g} m to "
+        f"{best.max():.4g} m, {best[-1] - best[0]:+.4g} m from start to end",
         elevation=record.elevation - best,
     )
 
@@ -349,7 +362,7 @@ def segment_shift(record: Record) -> QualityTest:
     count = record.n // size if size else 0
     if count < 2:
         return _not_evaluated("segment_shift", "fewer than two segments of 8 peak periods")
-    segments = record.elevation[-count * size :].reshape(count, size)
+    segments = without_spikes(record).elevation[-count * size :].reshape(count, size)
     full = (~np.isnan(segments)).mean(axis=1) >= 0.5
     if full.sum() < 2:
         return _not_evaluated("segment_shift", "fewer than two segments half measured")
@@ -466,7 +479,10 @@ def record_length(record: Record) -> QualityTest:
     """
     tp = _scales(record).tp
     if not isfinite(tp):
-        return _not_evaluated("record_length")
+        return QualityTest(
+            "record_length", "fail", record.n, 1,
+            f"{record.n} samples show no peak period: the record does not vary or is too short",
+        )  # fmt: skip
     length = record.duration / tp
     flag = "fail" if length < SHORTEST else "suspect" if length < SHORT else "pass"
     return QualityTest(
@@ -523,7 +539,8 @@ def hs_trend(record: Record) -> QualityTest:
     """
     tp = _scales(record).tp
     third = record.n // 3
-    parts = [record.elevation[:third], record.elevation[-third:]]
+    elevation = without_spikes(record).elevation
+    parts = [elevation[:third], elevation[-third:]]
     if not isfinite(tp) or any((~np.isnan(part)).mean() < 0.5 for part in parts):
         return _not_evaluated("hs_trend")
     first, last = (float(np.nanstd(part)) for part in parts)

@@ -12,7 +12,6 @@ wavenumber):
     difference frequencies  (1/2) H Im{kappa conj(zeta)}, H = -i sgn(Omega)
 
 (that is (k_i + k_j)/2 and -|k_i - k_j|/2 times a_i a_j for each pair of components:
-
 Longuet-Higgins 1963, J. Fluid Mech. 17, 459, eqs 3.7-3.8, collinear waves).  In finite depth the
 narrow-band forms are used: Stokes's (3 - T^2)/(2 T^3) for the sum part and the forced long wave of
 Longuet-Higgins & Stewart (1962), J. Fluid Mech. 13, 481, for the difference part.
@@ -28,7 +27,7 @@ from forecaster.datatypes import Envelope
 from forecaster.errors import InputError
 from forecaster.waves.linear import GRAVITY, group_ratio, group_velocity, wavenumber
 
-FREE_BAND = (0.4, 2.4)  # of the carrier frequency
+FREE_BAND = (0.4, 2.2)  # of the carrier frequency
 EDGE_WIDTH = 0.1  # relative width of the raised-cosine edges of that band
 SAMPLES_PER_PERIOD = 8  # of an envelope, at least: cubic products of the band stay unaliased
 MARGIN_PERIODS = 32.0  # empty time kept on each side of the record
@@ -59,8 +58,15 @@ def continued(elevation, dt, *, period, samples) -> np.ndarray:
     Notes
     -----
     Yule-Walker equations with the sample autocovariance and 0.1 % of white noise, which keeps a
-    band-limited record solvable; iterated one-step prediction equals the conditional mean
-    (Brockwell & Davis 1991, section 5.1).
+    band-limited record solvable; iterated one-step prediction is the conditional mean of the
+    autoregressive sea that has this autocovariance (Brockwell & Davis 1991, section 5.1).
+
+    Examples
+    --------
+    >>> import numpy as np
+    >>> wave = np.sin(2 * np.pi * np.arange(1600) / 16)
+    >>> continued(wave, 1.0, period=16.0, samples=8).round(1) + 0.0
+    array([0. , 0.4, 0.7, 0.9, 1. , 0.9, 0.7, 0.4])
     """
     n = elevation.size
     order = min(int(MEMORY_PERIODS * period / dt), n // 3)

@@ -127,9 +127,7 @@ class FullyNonlinearSea:
         if self.order == 3:
             half_square = 0.5 * eta * eta
             rates[0] = -eta * w2_part - half_square * psi_zz  # third-order potential
-            rates[1] = (
-                w2 + eta * second_zz + half_square * psi_zzz + slope * (slope * w1 - psi_x)
-            )
+            rates[1] = w2 + eta * second_zz + half_square * psi_zzz + slope * (slope * w1 - psi_x)
             rates[2] = 0.5 * (w1 * w1 - psi_x * psi_x) + w1 * w2
         else:
             rates[0] = 0.0
@@ -205,18 +203,27 @@ class FullyNonlinearSea:
         half = _Rotation(self, 0.5 * step)
         keep = np.exp(-self._filter_rate * step) if self.order > 1 else 1.0
         out = np.empty((samples, places.size))
-        for index in range(settle + samples * steps_per_sample):
-            done, rest = divmod(index - settle, steps_per_sample)
-            if index >= settle and rest == 0:
-                out[done] = self._to_grid(state[:1])[0][places]
-                if not np.isfinite(out[done]).all():
-                    raise NumericsError(
-                        f"the sea stopped being finite after {index} steps of {step:g} s; "
-                        "a shorter step or a gentler sea is needed",
-                        achieved=out[:done],
-                    )
-            state = keep * self._advance(state, step, index * step, half, ramp)
-        elevation, potential = self._to_grid(state)
+        steps = settle + samples * steps_per_sample
+        recorded = 0
+
+        def check(values, index):
+            if not np.isfinite(values).all():
+                raise NumericsError(
+                    f"the sea stopped being finite within {index} steps of {step:g} s; "
+                    "a shorter step or a gentler sea is needed",
+                    achieved=out[:recorded],
+                )
+
+        with np.errstate(over="ignore", invalid="ignore"):  # a blow-up is judged by the surface
+            for index in range(steps):
+                if index >= settle and (index - settle) % steps_per_sample == 0:
+                    row = self._to_grid(state[:1])[0][places]
+                    check(row, index)
+                    out[recorded] = row
+                    recorded += 1
+                state = keep * self._advance(state, step, index * step, half, ramp)
+            elevation, potential = self._to_grid(state)
+        check(elevation, steps)
         return out, Surface(elevation.copy(), potential.copy())
 
     def _advance(self, state, step, time, half, ramp):

@@ -30,7 +30,6 @@ about 0.12; finite depth kp h above 3.
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
-from functools import cached_property
 
 import numpy as np
 from scipy import fft
@@ -40,8 +39,9 @@ from forecaster.errors import InputError, NumericsError
 from forecaster.waves.linear import group_ratio, nonlinear_coefficient, wavenumber
 
 PAIR_SMOOTHING = 4.0  # carrier periods, standard deviation of the Gaussian
-KEPT = (0.25, 2.6)  # frequencies over the carrier that a run keeps
-STEP = 0.8  # in X
+KEPT = (0.25, 2.4)  # frequencies over the carrier that a run keeps
+STEP = 1.0  # in X
+STEP_RATE = 1.5  # a step turns no component by more than this through pair dispersion [rad]
 PHASE_LOSS = 24.0
 
 
@@ -137,7 +137,8 @@ def phase_coherence(offset, distance, steepness) -> np.ndarray:
     -----
     Short waves ride on long ones, and no envelope equation follows their phase for ever.  The
     form is empirical, measured on fully nonlinear long-crested seas (``python
-    benchmarks/forward_run.py`` prints the comparison); times the run it is the conditional mean of the wave at the target.
+    benchmarks/forward_run.py`` prints the comparison); times the run it is the conditional mean
+    of the wave at the target.
 
     Examples
     --------
@@ -161,7 +162,15 @@ class ForwardRun:
     stepper : str
         A key of `STEPPERS`.
     kept : (low, high)
-        Frequencies over the carrier that the run keeps.
+        Frequencies over the carrier that the run keeps, on either side of 1.
+    step : float
+        Longest step in X = k0 x.
+
+    Raises
+    ------
+    InputError
+        For an unknown equation or stepper, a step that is not positive, or a kept band that
+        does not hold the carrier.
 
     Notes
     -----
@@ -174,6 +183,10 @@ class ForwardRun:
             raise InputError(f"equation must be one of {', '.join(EQUATIONS)}, got {equation!r}")
         if stepper not in STEPPERS:
             raise InputError(f"stepper must be one of {', '.join(STEPPERS)}, got {stepper!r}")
+        if not (np.isfinite(step) and step > 0):
+            raise InputError(f"step must be a positive length in X = k0 x, got {step!r}")
+        if not 0 < kept[0] < 1 < kept[1]:
+            raise InputError(f"kept must hold the carrier: 0 < low < 1 < high, got {kept!r}")
         self.envelope = envelope
         self.equation = EQUATIONS[equation]
         self.stepper = STEPPERS[stepper]
@@ -193,21 +206,28 @@ class ForwardRun:
         if np.isfinite(depth):
             self._strength = float(nonlinear_coefficient(kh)) / (2 * ratio * np.tanh(kh))
         self._spectrum = fft.fft(k0 * envelope.values) * self._kept
+        if self.equation.pair_dispersion:
+            self._prepare_pair_dispersion()
 
-    @cached_property
-    def _smoothing(self):
-        width = 2 * np.pi * PAIR_SMOOTHING
-        return np.exp(-0.5 * (self._offset * width) ** 2)
-
-    @cached_property
-    def _residual(self):
+    def _prepare_pair_dispersion(self):
+        self._smoothing = np.exp(-0.5 * (self._offset * 2 * np.pi * PAIR_SMOOTHING) ** 2)
         power = np.abs(self._spectrum) ** 2
-        rate = np.zeros(power.size)
         total = power.sum()
+        self._residual = np.zeros(power.size)
+        self._typical = 0.0
         if total > 0:
             used = self._kept
-            rate[used] = pair_residual(self._offset[used], power[used] / total)
-        return rate
+            self._residual[used] = pair_residual(self._offset[used], power[used] / total)
+            intensity = np.abs(fft.ifft(self._spectrum)) ** 2
+            smooth = fft.ifft(self._smoothing * fft.fft(intensity)).real
+            self._typical = float((smooth * intensity).sum() / intensity.sum())
+        # the shift at the typical intensity is exact, with the linear part: only what the
+        # intensity varies about it is left to the stepper
+        rate = self._strength * self._typical * self._residual
+        self._linear_rate = self._linear_rate - rate
+        fastest = np.abs(rate).max()
+        if fastest > 0:
+            self.step = min(self.step, STEP_RATE / fastest)
 
     def _nonlinear(self, spectrum):
         offset = self._offset
@@ -222,7 +242,7 @@ class ForwardRun:
         slope, flow = pair.real, pair.imag
         rate = (6 * intensity) * a_t + (2 * (slope + 1j * flow) - 1j * intensity) * a
         if self.equation.pair_dispersion:
-            smooth = fft.ifft(self._smoothing * modes).real
+            smooth = fft.ifft(self._smoothing * modes).real - self._typical
             shifted = fft.ifft(self._residual * spectrum)
             rate -= 0.5j * smooth * shifted
             other = fft.fft(smooth * a)
@@ -266,8 +286,9 @@ class ForwardRun:
                 spectrum = np.exp(1j * self._linear_rate * length) * spectrum
             elif length > 0:
                 steps = int(np.ceil(length / self.step))
-                for _ in range(steps):
-                    spectrum = self._advance(spectrum, length / steps)
+                with np.errstate(over="ignore", invalid="ignore"):  # judged by the action below
+                    for _ in range(steps):
+                        spectrum = self._advance(spectrum, length / steps)
             place = distance
             drift = np.vdot(spectrum, spectrum).real / action - 1 if action > 0 else 0.0
             if not abs(drift) < 0.02:

@@ -25,7 +25,7 @@ def test_exact_stamps_change_no_value(dt, start, n):
     assert grid.history == ()
 
 
-@pytest.mark.parametrize("start", [0.0, 1.9e9])
+@pytest.mark.parametrize("start", [0.0, 1900000020.0])
 @pytest.mark.parametrize(
     ("rate", "resolution", "rounding"),
     [

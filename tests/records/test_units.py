@@ -38,7 +38,7 @@ def test_decimal_units_are_powers_of_ten():
 
 @pytest.mark.parametrize("unit", ["fathom", "", "s", "dbar"])
 def test_unknown_length_is_refused_with_the_known_ones(unit):
-    with pytest.raises(InputError, match="known unit of elevation.*mm"):
+    with pytest.raises(InputError, match=r"known unit of elevation.*mm"):
         length_scale(unit)
 
 

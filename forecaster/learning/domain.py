@@ -1,0 +1,116 @@
+"""Whether a sea lies where a model was trained and verified: inside, edge, outside."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from forecaster.datatypes import Domain, SeaState
+from forecaster.learning.features import FEATURES
+
+SPREAD_INSIDE, SPREAD_EDGE = 5.0, 10.0  # deg: a long-crested run loses the sea beyond
+KPH_INSIDE, KPH_EDGE = 15.0, 5.0  # the model is taught in deep water
+TANK_SENSOR_WORDS = "a flume or basin record is long-crested when its spread is given as 0"
+_WORSE = {"inside": 0, "edge": 1, "outside": 2}
+# features whose taught range bounds the domain: how far beyond (as a share of the range) is edge
+_BOUNDED = {
+    "steepness": 0.10,
+    "bandwidth": 0.25,
+    "peakedness": 0.25,
+    "noise_share": 0.50,
+    "distance_wavelengths": 0.02,
+}
+_LOWER_BOUNDED = {"record_periods": 0.35, "samples_per_period": 0.30}
+BOUNDING = (*_BOUNDED, *_LOWER_BOUNDED)  # features that `assess` looks at
+
+
+def assess(
+    sea: SeaState, features, names, ranges, *, criterion: str, sensor: str, beyond: bool
+) -> Domain:
+    """Compare a sea with what a model was taught.
+
+    Parameters
+    ----------
+    sea : SeaState
+        ``spread`` None if unknown.
+    features : (n, f) array
+        Of the intervals asked for.
+    names : tuple of str
+        Columns of `features`, `BOUNDING` among them.
+    ranges : dict of str to (low, high)
+        Of the model.
+    criterion : str
+        ``"height"`` or ``"crest"``.
+    sensor : str
+    beyond : bool
+        Whether the threshold asked for is above what the model was taught.
+
+    Returns
+    -------
+    Domain
+        The worst of all findings, with a reason each.
+    """
+    findings = [
+        _spread(sea.spread),
+        _depth(sea.kph),
+        *(_range(name, features, names, ranges) for name in BOUNDING),
+    ]
+    if criterion == "crest" and sensor == "buoy":
+        findings.append(
+            ("edge", "a following buoy hardly records the sharpening of crests: crests are judged "
+                     "from what it does record")
+        )  # fmt: skip
+    if beyond:
+        findings.append(
+            ("edge", "the threshold is above what the model was taught: an upper bound is given")
+        )
+    status = max((status for status, _ in findings), key=_WORSE.get)
+    return Domain(status, tuple(reason for state, reason in findings if state != "inside"))
+
+
+def _spread(spread):
+    if spread is None:
+        return "edge", (
+            "directional spread unknown: the forecast takes the sea as long-crested, and a spread "
+            f"of more than {SPREAD_INSIDE:g} deg would make it too sure; {TANK_SENSOR_WORDS}"
+        )
+    if spread <= SPREAD_INSIDE:
+        return "inside", ""
+    if spread <= SPREAD_EDGE:
+        return "edge", (
+            f"spread {spread:g} deg: beyond {SPREAD_INSIDE:g} deg a long-crested run loses the "
+            "waves within a few wavelengths"
+        )
+    return "outside", (
+        f"spread {spread:g} deg: the model is taught on long-crested seas, up to "
+        f"{SPREAD_EDGE:g} deg"
+    )
+
+
+def _depth(kph):
+    if kph >= KPH_INSIDE:
+        return "inside", ""
+    status = "edge" if kph >= KPH_EDGE else "outside"
+    return status, (
+        f"relative depth kp h = {kph:.3g}: the model is taught in deep water (kp h of "
+        f"{KPH_INSIDE:g} and more), where wave groups are more nonlinear"
+    )
+
+
+def _range(name, features, names, ranges):
+    values = np.asarray(features)[:, names.index(name)]
+    low, high = ranges[name]
+    value_low, value_high = float(values.min()), float(values.max())
+    slack = _BOUNDED.get(name, _LOWER_BOUNDED.get(name)) * (high - low)
+    below, above = low - value_low, value_high - high
+    if name in _LOWER_BOUNDED:
+        above = 0.0
+        slack = _LOWER_BOUNDED[name] * low
+    excess = max(below, above)
+    tolerance = 1e-6 * max(abs(low), abs(high))
+    if excess <= tolerance:
+        return "inside", ""
+    value = value_low if below >= above else value_high
+    return ("edge" if excess <= slack else "outside"), (
+        f"{FEATURES[name].words} {value:.3g} ({FEATURES[name].unit}): the model is taught between "
+        f"{low:.3g} and {high:.3g}"
+    )

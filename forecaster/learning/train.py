@@ -1,0 +1,264 @@
+"""Fitting: datasets -> bags of monotone boosted trees -> calibration on other seas -> Model."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+
+import numpy as np
+
+from forecaster.datatypes import ModelIdentity
+from forecaster.errors import InputError, NumericsError
+from forecaster.learning.dataset import Dataset
+from forecaster.learning.model import (
+    CRITERIA,
+    MARGINS,
+    Head,
+    Model,
+    Trees,
+    monotone_signs,
+    threshold_columns,
+)
+from forecaster.learning.scores import fit_platt
+from forecaster.settings import TrainSettings
+
+CALIBRATION_RATIOS = {"height": (1.0, 1.2, 1.4, 1.6, 1.8, 2.0, 2.2), "crest": (0.7, 0.9, 1.1, 1.25)}
+HORIZON_COVERAGE = 0.5
+_BINS = 200
+_REPLICATES = 40
+_SPLIT, _BAG, _LINE = range(3)  # purposes of random numbers
+
+
+def split_seas(dataset: Dataset, settings: TrainSettings) -> tuple[np.ndarray, np.ndarray]:
+    """Seas to fit on and seas to calibrate on: every record of a sea falls on one side."""
+    seas = np.unique(dataset.sea)
+    generator = np.random.default_rng([settings.root_seed, _SPLIT])
+    shuffled = generator.permutation(seas)
+    kept = round(settings.calibration_share * seas.size)
+    if kept < 2 or seas.size - kept < 2:
+        raise InputError(
+            f"{seas.size} seas are too few to fit and calibrate on; at least 8 are needed"
+        )
+    return np.sort(shuffled[kept:]), np.sort(shuffled[:kept])
+
+
+def draw_thresholds(dataset: Dataset, criterion: str, number: int, generator) -> np.ndarray:
+    """(rows, number) thresholds at which rows are shown to the trees.
+
+    One uniform over the criterion's range, one in its upper part, the others about the run's own
+    forecast, where the answer is open.  They depend on features only, never on outcomes.
+    """
+    low, high = CRITERIA[criterion]
+    rows = len(dataset.features)
+    drawn = generator.uniform(low, high, (rows, number))
+    if number > 1:
+        drawn[:, 1] = generator.uniform(low + 0.3 * (high - low), low + 0.8 * (high - low), rows)
+    if number > 2:
+        run = dataset.column(next(iter(MARGINS[criterion])))[:, None]
+        width = 0.12 * (high - low)
+        near = run + width * generator.standard_normal((rows, number - 2))
+        drawn[:, 2:] = np.where((near > low) & (near < high), near, drawn[:, 2:])
+    return drawn.astype(np.float32)
+
+
+def _flattened(booster) -> Trees:
+    """Trees of a fitted scikit-learn booster as flat arrays."""
+    parts = {name: [] for name in ("feature", "left", "right", "threshold", "value")}
+    roots, offset, depth = [], 0, 1
+    for (predictor,) in booster._predictors:
+        nodes = predictor.nodes
+        leaf = nodes["is_leaf"].astype(bool)
+        own = np.arange(nodes.size)
+        parts["feature"].append(np.where(leaf, 0, nodes["feature_idx"]))
+        parts["left"].append(np.where(leaf, own, nodes["left"]) + offset)
+        parts["right"].append(np.where(leaf, own, nodes["right"]) + offset)
+        parts["threshold"].append(np.where(leaf, np.inf, nodes["num_threshold"]))
+        parts["value"].append(np.where(leaf, nodes["value"], 0.0))
+        roots.append(offset)
+        offset += nodes.size
+        depth = max(depth, int(nodes["depth"].max()))
+    base = float(np.ravel(booster._baseline_prediction)[0])
+    arrays = {name: np.concatenate(rows) for name, rows in parts.items()}
+    return Trees(base=base, roots=np.array(roots), depth=depth, **arrays)
+
+
+def _fit_bag(dataset, names, criterion, settings, bag) -> Trees:
+    from sklearn.ensemble import HistGradientBoostingClassifier
+    from threadpoolctl import threadpool_limits
+
+    generator = np.random.default_rng([settings.root_seed, _BAG, bag, len(criterion)])
+    seas = np.unique(dataset.sea)
+    chosen = generator.choice(seas, max(round(settings.bag_share * seas.size), 1), replace=False)
+    rows = np.flatnonzero(np.isin(dataset.sea, chosen))
+    most = settings.rows_per_bag // settings.thresholds_per_interval
+    if rows.size > most:
+        rows = generator.choice(rows, most, replace=False)
+    part = dataset.rows(rows)
+    ratios = draw_thresholds(part, criterion, settings.thresholds_per_interval, generator)
+    number = ratios.shape[1]
+    used = [part.names.index(name) for name in names]
+    table = np.repeat(part.features[:, used], number, axis=0)
+    columns = threshold_columns(table, names, criterion, ratios.ravel())
+    reached = (getattr(part, criterion)[:, None] >= ratios).ravel()
+    booster = HistGradientBoostingClassifier(
+        max_iter=settings.boosting_rounds,
+        learning_rate=settings.learning_rate,
+        max_leaf_nodes=settings.leaves,
+        min_samples_leaf=settings.samples_per_leaf,
+        max_bins=_BINS,
+        monotonic_cst=monotone_signs(names, criterion),
+        early_stopping=False,
+        random_state=int(generator.integers(2**31)),
+    )
+    with threadpool_limits(1):
+        booster.fit(columns, reached)
+        trees = _flattened(booster)
+        probe = columns[:: max(len(columns) // 500, 1)]
+        difference = np.abs(trees.log_odds(probe) - booster.decision_function(probe)).max()
+    if not difference < 1e-9:
+        raise NumericsError(
+            f"the flattened trees differ from the fitted ones by {difference:g} in log odds",
+            achieved=difference,
+        )
+    return trees
+
+
+def _raw_log_odds(bags, dataset, names, criterion, ratios):
+    """(rows, k) mean log odds of the bags, one threshold at a time to bound memory."""
+    used = [dataset.names.index(name) for name in names]
+    table = dataset.features[:, used]
+    return np.stack(
+        [
+            np.mean(
+                [
+                    trees.log_odds(
+                        threshold_columns(table, names, criterion, np.full(len(table), ratio))
+                    )
+                    for trees in bags
+                ],
+                axis=0,
+            )
+            for ratio in ratios
+        ],
+        axis=1,
+    )
+
+
+def calibration_rows(dataset: Dataset) -> np.ndarray:
+    """Mask of rows that a forecast would show: covered, or at the sensor itself."""
+    return (dataset.column("coverage") >= HORIZON_COVERAGE) | (
+        dataset.column("distance_wavelengths") == 0
+    )
+
+
+def _calibrated_line(log_odds, reached, sea, generator):
+    """Calibration line and its covariance from resampled seas."""
+    line = fit_platt(log_odds.ravel(), reached.ravel(), smoothing=False)
+    seas, place = np.unique(sea, return_inverse=True)
+    lines = []
+    for _ in range(_REPLICATES):
+        weights = np.bincount(generator.integers(seas.size, size=seas.size), minlength=seas.size)
+        spread = np.broadcast_to(weights[place][:, None], log_odds.shape).ravel().astype(float)
+        resampled = fit_platt(
+            log_odds.ravel(), reached.ravel(), smoothing=False, weights=spread
+        )
+        lines.append((resampled.intercept, resampled.slope))
+    return line, np.cov(np.array(lines).T)
+
+
+def horizon_groups(dataset: Dataset) -> tuple[np.ndarray, np.ndarray]:
+    """(rows kept, number of the horizon each belongs to): one horizon a (record, distance)."""
+    kept = np.flatnonzero(calibration_rows(dataset))
+    key = np.stack(
+        [
+            dataset.sea[kept].astype(np.int64),
+            dataset.record[kept].astype(np.int64),
+            np.rint(100 * dataset.column("distance_wavelengths")[kept]).astype(np.int64),
+        ]
+    )
+    _, group = np.unique(key, axis=1, return_inverse=True)
+    return kept, group.ravel()
+
+
+def _fit_horizon(probability, reached, group) -> np.ndarray:
+    """c0, c1 of the horizon's link by maximum likelihood (see `Head.horizon`)."""
+    from scipy.optimize import minimize
+
+    count = group.max() + 1
+    hazard = -np.log1p(-np.clip(probability, 1e-12, 1 - 1e-9))
+    total = np.stack([np.bincount(group, column, count) for column in hazard.T], axis=1)
+    happened = np.stack([np.bincount(group, column, count) for column in reached.T], axis=1) > 0
+    x = np.log(total)
+
+    def loss(c):
+        joint = np.exp(np.clip(c[0] + c[1] * x, -30, 6))
+        return np.where(happened, -np.log(-np.expm1(-joint)), joint).mean()
+
+    found = minimize(loss, np.array([0.0, 1.0]), method="Nelder-Mead")
+    if not found.x[1] > 0:
+        raise NumericsError(
+            f"the horizon's link falls with the intervals' probabilities (slope {found.x[1]:g})",
+            achieved=found.x,
+        )
+    return found.x
+
+
+def fit_head(
+    fitted: Dataset, held: Dataset, criterion: str, settings: TrainSettings,
+    *, names: tuple[str, ...], progress: Callable[[str], None] = lambda message: None,
+) -> Head:  # fmt: skip
+    """One criterion: bags on `fitted`, calibration on `held`; no sea is in both."""
+    bags = []
+    for bag in range(settings.bags):
+        progress(f"{criterion}: bag {bag + 1} of {settings.bags}")
+        bags.append(_fit_bag(fitted, names, criterion, settings, bag))
+    kept, group = horizon_groups(held)
+    shown = held.rows(kept)
+    ratios = CALIBRATION_RATIOS[criterion]
+    progress(f"{criterion}: calibration on {np.unique(held.sea).size} seas")
+    log_odds = _raw_log_odds(bags, shown, names, criterion, ratios)
+    reached = getattr(shown, criterion)[:, None] >= np.array(ratios)
+    generator = np.random.default_rng([settings.root_seed, _LINE, len(criterion)])
+    line, covariance = _calibrated_line(log_odds, reached, shown.sea, generator)
+    probability = 1 / (1 + np.exp(-(line.intercept + line.slope * log_odds)))
+    horizon = _fit_horizon(probability, reached, group)
+    return Head(names, tuple(bags), line.slope, line.intercept, covariance, horizon)
+
+
+def fit(
+    dataset: Dataset,
+    settings: TrainSettings,
+    *,
+    name: str,
+    version: str,
+    names: tuple[str, ...] | None = None,
+    criteria: tuple[str, ...] = tuple(CRITERIA),
+    progress: Callable[[str], None] = lambda message: None,
+) -> Model:
+    """Fit and calibrate a model.
+
+    Parameters
+    ----------
+    dataset : Dataset
+        At least 8 seas.
+    settings : TrainSettings
+    name, version : str
+    names : tuple of str or None
+        Features to use; None for all of the dataset's (an ablation passes fewer).
+    criteria : tuple of str
+    progress : callable
+        Told what is being done.
+    """
+    fit_on, calibrate_on = split_seas(dataset, settings)
+    fitted = dataset.rows(np.isin(dataset.sea, fit_on))
+    held = dataset.rows(np.isin(dataset.sea, calibrate_on))
+    names = dataset.names if names is None else names
+    heads = {
+        criterion: fit_head(fitted, held, criterion, settings, names=names, progress=progress)
+        for criterion in criteria
+    }
+    quantiles = np.quantile(fitted.features, (0.002, 0.998), axis=0)
+    ranges = {
+        feature: (float(low), float(high))
+        for feature, low, high in zip(dataset.names, *quantiles, strict=True)
+    }
+    return Model(ModelIdentity(name, version, ""), heads, ranges)

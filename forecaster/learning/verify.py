@@ -1,0 +1,346 @@
+"""Verification: how good the probabilities are on seas that were never trained on.
+
+Tables print seas, seas with events, intervals and events beside each score; intervals of a score
+come from resampling whole seas.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+
+from forecaster.errors import NumericsError
+from forecaster.learning.dataset import Dataset
+from forecaster.learning.features import WAVES_PER_INTERVAL
+from forecaster.learning.model import Model
+from forecaster.learning.scores import (
+    bootstrap_by_group,
+    bootstrap_difference,
+    brier_skill,
+    calibration_line,
+    isotonic_decomposition,
+    log_skill,
+    logarithmic_score,
+    mean_bias,
+    pool_adjacent_violators,
+    precision_recall_area,
+    reliability_curve,
+    roc_area,
+)
+from forecaster.learning.train import HORIZON_COVERAGE, horizon_groups, split_seas
+from forecaster.settings import TrainSettings
+from forecaster.waves.heights import (
+    excess_kurtosis_from_bfi,
+    largest_exceedance,
+    mori_janssen_height_exceedance,
+    predictive_base_rate,
+)
+
+REPLICATES = 400
+MIN_EVENTS_FOR_LINE = 200
+FLOOR = 1e-6  # of a baseline's probability, so that one surprise is not an infinite score
+FEATURE_SETS = {
+    "statistics": (
+        "steepness", "bfi", "bandwidth", "peakedness", "hs_error", "skewness", "excess_kurtosis",
+        "groupiness", "noise_share", "record_periods", "samples_per_period", "largest_height",
+        "distance_wavelengths", "lead_periods", "coverage", "least_coverage",
+    ),
+    "scattering": (
+        "group_eigenvalue", "group_speed_offset", "group_eigenvalue_sum", "group_soliton_share",
+        "group_chirp", "group_focus_nearness", "group_amplification", "record_eigenvalue",
+        "record_soliton_share",
+    ),
+    "forward run": (
+        "unexplained", "run_height", "run_crest", "run_envelope", "run_height_wide",
+        "run_crest_wide", "run_second_height", "run_height_before", "run_height_after",
+        "full_height", "full_crest", "full_envelope", "linear_height", "linear_envelope",
+        "fed_envelope", "reach_50", "reach_10", "reach_1",
+    ),
+}  # fmt: skip
+ABLATIONS = {
+    "BFI and statistics": ("statistics",),
+    "+ scattering": ("statistics", "scattering"),
+    "+ forward run": ("statistics", "forward run"),
+    "all": ("statistics", "scattering", "forward run"),
+}
+
+
+@dataclass(frozen=True, slots=True)
+class Row:
+    """One line of a table: what was scored, on how much, and scores with by-sea intervals.
+
+    `scores` maps a name to (value, low, high), or to None where there are too few events.
+    """
+
+    label: str
+    seas: int
+    seas_with_events: int
+    cases: int
+    events: int
+    scores: dict[str, tuple[float, float, float] | None]
+
+
+def forecast_rows(dataset: Dataset, *, coverage: float = HORIZON_COVERAGE) -> Dataset:
+    """The intervals a forecast would show: downwave, after the issue time, half measured."""
+    return dataset.rows(
+        (dataset.column("coverage") >= coverage) & (dataset.column("distance_wavelengths") > 0)
+    )
+
+
+def score_row(label: str, p, y, sea, *, generator, replicates=REPLICATES) -> Row:
+    """Scores of one set of cases; intervals from resampled seas."""
+    p, y = np.clip(np.asarray(p, float), FLOOR, 1 - FLOOR), np.asarray(y, bool)
+    events = int(y.sum())
+    with_events = int(np.unique(sea[y]).size)
+    scores: dict[str, tuple[float, float, float] | None] = {}
+    functions = {"log skill": log_skill, "Brier skill": brier_skill, "ROC": roc_area,
+                 "mean bias": mean_bias}  # fmt: skip
+    if events >= MIN_EVENTS_FOR_LINE:
+        functions["line"] = calibration_line
+    if 0 < events < y.size and with_events > 1:
+        found = bootstrap_by_group(
+            functions, p, y, sea, generator=generator, replicates=replicates
+        )
+        scores = {name: (s.value, s.low, s.high) for name, s in found.items()}
+    return Row(label, int(np.unique(sea).size), with_events, int(y.size), events, scores)
+
+
+def model_table(model: Model, dataset: Dataset, ratio: float, *, generator) -> list[Row]:
+    """Scores of a model at one height ratio: pooled, and by distance, steepness and coverage."""
+    shown = forecast_rows(dataset)
+    p = model.intervals(shown.features, shown.names, [ratio]).probability[:, 0]
+    y = shown.height >= ratio
+    rows = [score_row("pooled", p, y, shown.sea, generator=generator)]
+    groups = [
+        *((f"{d:g} wavelengths", shown.distance == d) for d in np.unique(shown.distance)),
+        *_bands("steepness", shown.true_steepness, (0.04, 0.07, 0.10, 0.14)),
+        *_bands("coverage", shown.column("coverage"), (0.5, 0.8, 0.95, 1.0)),
+    ]
+    for label, mask in groups:
+        if mask.any():
+            rows.append(score_row(label, p[mask], y[mask], shown.sea[mask], generator=generator))
+    return rows
+
+
+def _bands(name, values, edges):
+    last = len(edges) - 2
+    for i, (low, high) in enumerate(zip(edges[:-1], edges[1:], strict=True)):
+        upper = values <= high + 1e-6 if i == last else values < high
+        yield f"{name} {low:g}-{high:g}", (values >= low) & upper
+
+
+def horizon_table(model: Model, dataset: Dataset, ratio: float, *, generator) -> list[Row]:
+    """Scores of horizon probabilities: one case a (record, distance)."""
+    kept, group = horizon_groups(dataset)
+    shown = dataset.rows(kept)
+    inner = model.intervals(shown.features, shown.names, [ratio])
+    order = np.argsort(group, kind="stable")
+    starts = np.flatnonzero(np.r_[True, np.diff(group[order]) > 0])
+    p, y, sea, distance = [], [], [], []
+    for members in np.split(order, starts[1:]):
+        part = type(inner)(inner.probability[members], inner.error[members])
+        p.append(model.horizon(part).probability[0, 0])
+        y.append(bool((shown.height[members] >= ratio).any()))
+        sea.append(shown.sea[members[0]])
+        distance.append(shown.distance[members[0]])
+    p, y, sea, distance = (np.array(v) for v in (p, y, sea, distance))
+    rows = [score_row("pooled", p, y, sea, generator=generator)]
+    for d in np.unique(distance):
+        mask = distance == d
+        rows.append(
+            score_row(f"{d:g} wavelengths", p[mask], y[mask], sea[mask], generator=generator)
+        )
+    return rows
+
+
+def monotone_calibration(x, y) -> Callable[[np.ndarray], np.ndarray]:
+    """One variable turned into a probability by isotonic regression (both ends held)."""
+    order = np.argsort(x, kind="stable")
+    fitted = pool_adjacent_violators(np.asarray(y, float)[order])
+    places, index = np.unique(np.asarray(x, float)[order], return_index=True)
+    last = np.r_[index[1:], fitted.size] - 1
+    values = np.clip(0.5 * (fitted[index] + fitted[last]), FLOOR, 1 - FLOOR)
+    return lambda new: np.interp(new, places, values)
+
+
+def _base_rate_score(data, ratio):
+    return predictive_base_rate(ratio, WAVES_PER_INTERVAL, data.column("hs_error").astype(float))
+
+
+def _mori_janssen_score(data, ratio):
+    kappa = excess_kurtosis_from_bfi(data.column("bfi").astype(float))
+    return largest_exceedance(mori_janssen_height_exceedance(ratio, kappa), WAVES_PER_INTERVAL)
+
+
+def baselines(taught: Dataset, dataset: Dataset, ratio: float) -> dict[str, np.ndarray]:
+    """Probability of each baseline for the rows of `dataset`, calibrated on `taught`.
+
+    Both hold forecast rows only.  One-variable monotone calibration, except the logistic line.
+    """
+    y = taught.height >= ratio
+    one_variable = {
+        "predictive base rate": _base_rate_score,
+        "Mori-Janssen with BFI": _mori_janssen_score,
+        "linear forward run": lambda data, ratio: data.column("linear_height"),
+    }
+    found = {"climatology": np.full(len(dataset.height), y.mean())}
+    for name, variable in one_variable.items():
+        calibrated = monotone_calibration(variable(taught, ratio), y)
+        found[name] = calibrated(variable(dataset, ratio))
+    found["kurtosis and largest wave"] = _logistic(taught, dataset, y)
+    known = np.isfinite(taught.plain_run)
+    if known.any() and np.isfinite(dataset.plain_run).all():
+        calibrated = monotone_calibration(taught.plain_run[known], y[known])
+        found["Dysthe forward run"] = calibrated(dataset.plain_run)
+    return found
+
+
+def _logistic(taught, dataset, y):
+    from sklearn.linear_model import LogisticRegression
+
+    names = ("excess_kurtosis", "largest_height")
+    teach, ask = (np.stack([d.column(n) for n in names], axis=1) for d in (taught, dataset))
+    return LogisticRegression(C=1e6).fit(teach, y).predict_proba(ask)[:, 1]
+
+
+def baseline_table(model, taught, dataset, ratio, *, generator) -> list[dict]:
+    """Each baseline's log skill, and the model's gain in mean log score with its interval.
+
+    Parameters
+    ----------
+    taught : Dataset
+        The training seas, with the plain Dysthe run where it was computed.
+    dataset : Dataset
+        The verification seas.
+    """
+    shown, teach = forecast_rows(dataset), forecast_rows(taught)
+    y = shown.height >= ratio
+    p = np.clip(
+        model.intervals(shown.features, shown.names, [ratio]).probability[:, 0], FLOOR, 1 - FLOOR
+    )
+    table = []
+    for name, q in baselines(teach, shown, ratio).items():
+        q = np.clip(q, FLOOR, 1 - FLOOR)
+        gain = bootstrap_difference(
+            logarithmic_score, q, p, y, shown.sea, generator=generator, replicates=REPLICATES
+        )
+        table.append(
+            {
+                "baseline": name,
+                "log_skill": float(log_skill(q, y)),
+                "roc": float(roc_area(q, y)),
+                "gain_in_log_score": float(gain.value),
+                "gain_90": [float(gain.low), float(gain.high)],
+            }
+        )
+    return table
+
+
+def ablation(
+    taught: Dataset, dataset: Dataset, settings: TrainSettings, ratio: float, *, generator,
+    fit: Callable, progress: Callable[[str], None] = lambda message: None,
+) -> list[dict]:  # fmt: skip
+    """What each kind of feature adds: one model per set, fitted alike, scored alike."""
+    table, scored = [], {}
+    shown = forecast_rows(dataset)
+    y = shown.height >= ratio
+    for label, sets in ABLATIONS.items():
+        progress(f"ablation: {label}")
+        names = tuple(name for part in sets for name in FEATURE_SETS[part])
+        model = fit(
+            taught, settings, name="ablation", version="0", names=names, criteria=("height",)
+        )
+        p = model.intervals(shown.features, shown.names, [ratio]).probability[:, 0]
+        scored[label] = np.clip(p, FLOOR, 1 - FLOOR)
+        row = score_row(label, p, y, shown.sea, generator=generator)
+        by_distance = {
+            f"{d:g}": float(log_skill(scored[label][shown.distance == d], y[shown.distance == d]))
+            for d in np.unique(shown.distance)
+        }
+        table.append(
+            {
+                "features": label,
+                "log_skill": list(row.scores["log skill"]),
+                "roc": list(row.scores["ROC"]),
+                "log_skill_by_distance": by_distance,
+            }
+        )
+    for pair in (("BFI and statistics", "+ scattering"), ("+ forward run", "all")):
+        gain = bootstrap_difference(
+            logarithmic_score, scored[pair[0]], scored[pair[1]], y, shown.sea,
+            generator=generator, replicates=REPLICATES,
+        )  # fmt: skip
+        table.append(
+            {"from": pair[0], "to": pair[1], "gain_in_log_score": float(gain.value),
+             "gain_90": [float(gain.low), float(gain.high)]}
+        )  # fmt: skip
+    return table
+
+
+def verify(
+    model: Model, dataset: Dataset, *, taught: Dataset | None = None,
+    ratios: tuple[float, ...] = (1.6, 2.0), seed: int = 0,
+) -> dict:  # fmt: skip
+    """Everything that is measured of a model on seas never trained on, ready for JSON.
+
+    Parameters
+    ----------
+    model : Model
+    dataset : Dataset
+        Of the verification recipe.
+    taught : Dataset or None
+        The training seas: with them, baselines are calibrated and compared.
+    ratios : tuple of float
+        Height ratios.
+    seed : int
+        Of the resampling.
+    """
+    generator = np.random.default_rng(seed)
+    result = {
+        "model": {"name": model.identity.name, "version": model.identity.version},
+        "rows": "downwave intervals after the issue time with coverage >= "
+        f"{HORIZON_COVERAGE:g}; intervals 90 %, from resampled seas",
+        "ratios": {},
+    }
+    for ratio in ratios:
+        shown = forecast_rows(dataset)
+        p = model.intervals(shown.features, shown.names, [ratio]).probability[:, 0]
+        y = shown.height >= ratio
+        entry = {
+            "intervals": [_as_dict(r) for r in model_table(model, dataset, ratio, generator=generator)],
+            "horizons": [_as_dict(r) for r in horizon_table(model, dataset, ratio, generator=generator)],
+        }  # fmt: skip
+        try:
+            entry["precision_recall"] = float(precision_recall_area(p, y))
+            entry["brier_parts"] = {k: float(v) for k, v in isotonic_decomposition(p, y)._asdict().items()}  # fmt: skip
+            entry["reliability"] = _reliability(p, y)
+        except NumericsError as error:
+            entry["not_scored"] = str(error)
+        if taught is not None:
+            entry["baselines"] = baseline_table(model, taught, dataset, ratio, generator=generator)
+        result["ratios"][f"{ratio:g}"] = entry
+    return result
+
+
+def _reliability(p, y):
+    curve = reliability_curve(p, y, bins=np.array([0, 0.002, 0.01, 0.05, 0.1, 0.2, 0.4, 0.6, 0.8, 1.0]))
+    return {name: np.asarray(getattr(curve, name)).tolist() for name in curve.__slots__}
+
+
+def _as_dict(row: Row) -> dict:
+    return {
+        "label": row.label,
+        "seas": row.seas,
+        "seas_with_events": row.seas_with_events,
+        "cases": row.cases,
+        "events": row.events,
+        "scores": {k: [round(float(x), 5) for x in v] for k, v in row.scores.items()},
+    }
+
+
+def held_out(dataset: Dataset, settings: TrainSettings) -> Dataset:
+    """The calibration seas of a training set (for tables that need no fresh seas)."""
+    _, calibrate_on = split_seas(dataset, settings)
+    return dataset.rows(np.isin(dataset.sea, calibrate_on))

@@ -1,0 +1,233 @@
+"""Data types as figures; nothing is computed here.
+
+Figures are made with the `matplotlib.figure.Figure` class alone, so no global state is touched
+and no display is needed.
+
+>>> image_bytes(Figure(), "svg")[:5]
+b'<?xml'
+"""
+
+from __future__ import annotations
+
+import io
+
+import matplotlib as mpl
+import numpy as np
+from matplotlib.figure import Figure
+from matplotlib.lines import Line2D
+from matplotlib.ticker import FuncFormatter
+
+from forecaster.datatypes import Forecast
+from forecaster.errors import InputError
+from forecaster.waves.heights import zero_crossing_waves
+from forecaster.wording import one_in, percent
+
+FORMATS = ("png", "svg", "pdf")
+# Told apart with every common kind of colour vision: Okabe & Ito 2008, Color Universal Design.
+FORECAST, BASE, THRESHOLD, SEA = "#0072B2", "#222222", "#D55E00", "#4d4d4d"
+LARGEST_WAVES = 3
+_RESOLUTION = 150  # dots per inch
+_LOWEST = 1e-5  # of the axis of probabilities
+
+
+def forecast_figure(forecast: Forecast) -> Figure:
+    """The record, the probability in each interval, and the probability of every height.
+
+    Parameters
+    ----------
+    forecast : Forecast
+        Where no forecast could be given, the base rate alone is drawn; where the quality
+        failed, the record alone.
+    """
+    if forecast.target is None:
+        figure = Figure(figsize=(11, 3.2), layout="constrained")
+        _draw_record(figure.subplots(), forecast)
+    else:
+        figure = Figure(figsize=(11, 7.6), layout="constrained")
+        grid = figure.add_gridspec(3, 2, height_ratios=(1, 1.35, 0.3), width_ratios=(1.25, 1))
+        _draw_record(figure.add_subplot(grid[0, :]), forecast)
+        bars = figure.add_subplot(grid[1, 0])
+        _draw_intervals(bars, forecast)
+        _draw_coverage(figure.add_subplot(grid[2, 0], sharex=bars), forecast)
+        bars.tick_params(labelbottom=False)
+        _draw_exceedance(figure.add_subplot(grid[1:, 1]), forecast)
+    # a file name may hold "$", which would otherwise be read as mathematics
+    figure.suptitle(_title(forecast), parse_math=False, ha="left", x=0.01, fontsize=13)
+    return figure
+
+
+def image_bytes(figure: Figure, form: str) -> bytes:
+    """A figure as the content of a file; equal figures give equal bytes.
+
+    Parameters
+    ----------
+    figure : Figure
+    form : str
+        One of `FORMATS`.
+
+    Raises
+    ------
+    InputError
+        For another format.
+    """
+    if form not in FORMATS:
+        raise InputError(f"a figure is written as one of {', '.join(FORMATS)}, got {form!r}")
+    undated = {
+        "png": {"Software": None},
+        "svg": dict.fromkeys(("Date", "Creator", "Format", "Type")),
+        "pdf": dict.fromkeys(("CreationDate", "Creator", "Producer")),
+    }[form]
+    stream = io.BytesIO()
+    with mpl.rc_context({"svg.hashsalt": "trikymia"}):
+        figure.savefig(stream, format=form, dpi=_RESOLUTION, metadata=undated)
+    return stream.getvalue()
+
+
+def inline_svg(figure: Figure) -> str:
+    """A figure as an ``<svg>`` element to stand inside a page: it loads nothing from elsewhere."""
+    text = image_bytes(figure, "svg").decode("utf-8")
+    return text[text.index("<svg") :]
+
+
+def _title(forecast: Forecast) -> str:
+    name = forecast.record.source.rsplit("/", 1)[-1]
+    name = name.encode("ascii", "backslashreplace").decode("ascii")
+    if not forecast.answered:
+        return f"{name}: no forecast"
+    chance = f"{percent(forecast.probability)} ({one_in(forecast.probability)})"
+    target = forecast.target
+    where = "at the sensor" if target.distance == 0 else f"{target.distance:.0f} m downwave"
+    noun = "crest" if target.criterion == "crest" else "wave"
+    minutes = (target.valid_to - target.valid_from) / 60
+    return (
+        f"{name}: {chance} for a {noun} of {target.threshold_m:.1f} m or more {where}, "
+        f"within {minutes:.0f} min"
+    )
+
+
+def _draw_record(axes, forecast: Forecast) -> None:
+    record = forecast.record
+    axes.plot((record.times - record.end) / 60, record.elevation, color=SEA, lw=0.7)
+    axes.axhline(0, color="#bbbbbb", lw=0.6, zorder=0)
+    axes.axvline(0, color=THRESHOLD, lw=1.5)
+    waves = zero_crossing_waves(record.elevation, record.dt, start=record.start)
+    for rank, i in enumerate(np.argsort(-waves.height)[:LARGEST_WAVES]):
+        span = (np.array([waves.start[i], waves.end[i]]) - record.end) / 60
+        axes.axvspan(*span, color=FORECAST, alpha=0.25, lw=0)
+        axes.annotate(
+            f"{waves.height[i]:.1f} m",
+            ((waves.crest_time[i] - record.end) / 60, waves.crest[i]),
+            xytext=(0, 3), textcoords="offset points", ha="center", va="bottom",
+            color=FORECAST, fontsize=9, fontweight="bold" if rank == 0 else "normal",
+        )  # fmt: skip
+    axes.margins(x=0.01, y=0.18)
+    sea = "" if forecast.sea_state is None else (
+        f": significant height {forecast.sea_state.hs:.1f} m, "
+        f"peak period {forecast.sea_state.tp:.1f} s"
+    )  # fmt: skip
+    axes.set_title(f"The waves at the sensor{sea}; largest waves in blue", fontsize=10, loc="left")
+    axes.set_xlabel("minutes, counted from the end of the record (orange line: issue time)")
+    axes.set_ylabel("surface [m]")
+
+
+def _draw_intervals(axes, forecast: Forecast) -> None:
+    axes.set_title("When: probability in each interval at the target", fontsize=10, loc="left")
+    axes.set_ylabel("probability")
+    axes.yaxis.set_major_formatter(FuncFormatter(lambda value, _: f"{100 * value:.3g} %"))
+    if not forecast.intervals:
+        _say(axes, "no interval is forecast")
+        return
+    edges = _edges(forecast)
+    scored = [item.probability for item in forecast.intervals]
+    if None in scored:
+        _say(axes, "no forecast: base rate only")
+    else:
+        axes.bar(
+            edges[:-1], scored, np.diff(edges), align="edge", color=FORECAST, alpha=0.6,
+            edgecolor="white", lw=0.5, label="forecast",
+        )  # fmt: skip
+    rates = [item.base_rate for item in forecast.intervals]
+    if None not in rates:
+        axes.stairs(
+            rates, edges, baseline=None, color=BASE, lw=1.6, ls="--",
+            label="ordinary sea of this height (base rate)",
+        )  # fmt: skip
+    top = max((value for value in (*scored, *rates) if value is not None), default=1.0)
+    axes.set_ylim(0, 1.25 * top or 1.0)
+    axes.set_xlim(edges[0], edges[-1])
+    axes.legend(loc="upper right", frameon=False, fontsize=9)
+
+
+def _draw_coverage(axes, forecast: Forecast) -> None:
+    axes.set_xlabel("minutes after the end of the record, at the target")
+    axes.set_ylabel("waves\nknown", fontsize=9)
+    axes.set_ylim(0, 1)
+    axes.set_yticks((0, 1), ("none", "all"), fontsize=8)
+    if forecast.intervals:
+        axes.stairs(
+            [item.coverage for item in forecast.intervals], _edges(forecast),
+            color="#009E73", fill=True, alpha=0.6,
+        )  # fmt: skip
+
+
+def _edges(forecast: Forecast) -> np.ndarray:
+    """(m + 1,) edges of the intervals, minutes after the issue time."""
+    ends = [forecast.intervals[0].start, *(item.end for item in forecast.intervals)]
+    return (np.array(ends) - forecast.record.end) / 60
+
+
+def _draw_exceedance(axes, forecast: Forecast) -> None:
+    axes.set_title("How high: largest wave of the whole period", fontsize=10, loc="left")
+    if not forecast.exceedance:
+        _say(axes, "no heights are forecast")
+        return
+    target, rows = forecast.target, forecast.exceedance
+    heights = [row.height for row in rows]
+    handles = []
+    for name, label, style in (
+        ("base_rate", "ordinary sea (base rate)", {"color": BASE, "lw": 1.6, "ls": "--"}),
+        ("probability", "forecast", {"color": FORECAST, "lw": 2.2}),
+    ):
+        values = [getattr(row, name) for row in rows]
+        if None not in values:
+            handles += axes.plot(heights, np.maximum(values, _LOWEST / 10), label=label, **style)
+    axes.axvline(target.threshold_m, color=THRESHOLD, lw=1.2)
+    handles.append(
+        Line2D([], [], color=THRESHOLD, lw=1.2, label=f"asked: {target.threshold_m:.1f} m")
+    )
+    if forecast.probability is not None and forecast.probability_90 is not None:
+        low, high = (max(value, _LOWEST) for value in forecast.probability_90)
+        axes.plot([target.threshold_m] * 2, [low, high], color=FORECAST, lw=5, alpha=0.45)
+        handles += axes.plot(
+            target.threshold_m, max(forecast.probability, _LOWEST), "o", color=FORECAST, ms=8,
+            mec="white", label="this answer, bar: 90 % interval",
+        )  # fmt: skip
+    axes.set_yscale("log")
+    axes.set_ylim(_floor(forecast), 1.5)
+    axes.yaxis.set_major_formatter(FuncFormatter(_tick))
+    axes.grid(True, which="major", color="#e4e4e4", lw=0.6)
+    axes.set_axisbelow(True)
+    noun = "crest above mean level" if target.criterion == "crest" else "wave height"
+    axes.set_xlabel(f"largest {noun} reaches this many metres")
+    axes.set_ylabel("probability")
+    if target.threshold > 0:
+        hs = target.threshold_m / target.threshold
+        above = axes.secondary_xaxis("top", functions=(lambda x: x / hs, lambda x: x * hs))
+        above.set_xlabel("the same, in significant wave heights (Hs)", fontsize=9)
+        above.tick_params(labelsize=8)
+    axes.legend(handles=handles, loc="lower left", frameon=True, framealpha=0.9, fontsize=9)
+
+
+def _floor(forecast: Forecast) -> float:
+    """Lower end of the axis of probabilities: a decade below what is asked, at most 0.1 %."""
+    shown = [forecast.base_rate, forecast.probability, *(forecast.probability_90 or ())]
+    smallest = min((value for value in shown if value is not None), default=1e-2)
+    return max(min(smallest / 10, 1e-3), _LOWEST)
+
+
+def _tick(value: float, _) -> str:
+    return f"{100 * value:g} %\n{one_in(value)}" if value < 0.5 else f"{100 * value:g} %"
+
+
+def _say(axes, text: str) -> None:
+    axes.text(0.5, 0.5, text, transform=axes.transAxes, ha="center", va="center", color=BASE)
