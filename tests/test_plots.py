@@ -140,6 +140,12 @@ def test_inline_svg_loads_nothing_from_elsewhere(figure):
     assert "<script" not in text and "@import" not in text
 
 
+def test_a_file_name_cannot_break_out_of_the_svg():
+    made = forecast(source="--><img src=x onerror=alert(1)><!--.csv")
+    text = plots.inline_svg(plots.forecast_figure(made))
+    assert "onerror" in text and "<img" not in text and "--><" not in text
+
+
 def test_drawing_needs_no_display_and_leaves_pyplot_alone():
     program = (
         "import sys; from forecaster import plots; from tests.hand_built import forecast; "

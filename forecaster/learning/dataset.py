@@ -169,14 +169,16 @@ def member_rows(recipe: SeaRecipe, member: int, sea: dict, *, plain_records: int
         gauge = number // recipe.views.per_sensor * stride
         record, _ = take_record(elevation[gauge], dt, recipe.views, generator, after=after)
         reached = steps if closed else steps[gauge + steps < recipe.gauges]
+        if reached.size == 0:
+            continue
         try:
             ahead = look_ahead(record, reached * spacing)
+            edges = interval_edges(record.end, ahead.sea.tp, count)
+            plain = np.full((reached.size, count), np.nan)
+            if number < plain_records:
+                plain = _plain_heights(ahead, edges)
         except (InputError, NumericsError):
             continue  # too coarse for its own waves, or a run that fails: not scored either
-        edges = interval_edges(record.end, ahead.sea.tp, count)
-        plain = np.full((reached.size, count), np.nan)
-        if number < plain_records:
-            plain = _plain_heights(ahead, edges)
         for index, step in enumerate(reached):
             scene = Scene(ahead, index, edges)
             truth = elevation[(gauge + step) % recipe.gauges]

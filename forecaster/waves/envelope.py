@@ -29,7 +29,8 @@ from forecaster.waves.linear import GRAVITY, group_ratio, group_velocity, wavenu
 
 FREE_BAND = (0.4, 2.2)  # of the carrier frequency
 EDGE_WIDTH = 0.1  # relative width of the raised-cosine edges of that band
-SAMPLES_PER_PERIOD = 8  # of an envelope, at least: cubic products of the band stay unaliased
+SAMPLES_PER_PERIOD = 5  # of an envelope, at least: cubic products of the band stay unaliased
+FINE_PER_PERIOD = 16  # of an elevation with bound waves
 MARGIN_PERIODS = 32.0  # empty time kept on each side of the record
 MEMORY_PERIODS = 12.0  # of the conditional mean that continues a record
 CONTINUATION_PERIODS = 3.0
@@ -188,7 +189,7 @@ def free_envelope(elevation, dt, *, omega0, depth=np.inf, start=0.0, margin=None
     # work at a step fine enough for the sum-frequency waves and a whole fraction of the window
     duration = size * dt
     omega0 = 2 * np.pi / duration * round(omega0 * duration / (2 * np.pi))
-    fine = fft.next_fast_len(max(size, int(np.ceil(2 * SAMPLES_PER_PERIOD * duration / period))))
+    fine = fft.next_fast_len(max(size, int(np.ceil(FINE_PER_PERIOD * duration / period))))
     omega = -2 * np.pi * fft.fftfreq(fine, duration / fine)
     weight = _band_weight(omega / omega0, *FREE_BAND)
     spectrum = _resized(fft.fft(padded), fine)
@@ -217,7 +218,7 @@ def _resized(spectrum, m):
     return result * (m / n)
 
 
-def elevation_of(envelope: Envelope, *, refine: int = 2) -> tuple[np.ndarray, float]:
+def elevation_of(envelope: Envelope, *, refine: int = 4) -> tuple[np.ndarray, float]:
     """Elevation with bound waves put back, on a grid `refine` times finer.
 
     Parameters

@@ -206,8 +206,13 @@ class ForwardRun:
         if np.isfinite(depth):
             self._strength = float(nonlinear_coefficient(kh)) / (2 * ratio * np.tanh(kh))
         self._spectrum = fft.fft(k0 * envelope.values) * self._kept
+        # what is made of a, and of |a|^2: its slope and mean flow share one transform
+        self._of_a = np.stack([np.ones(n), -1j * self._offset])
+        self._of_intensity = (-1j * self._offset + 1j * np.abs(self._offset))[None]
         if self.equation.pair_dispersion:
             self._prepare_pair_dispersion()
+            self._of_a = np.vstack([self._of_a, self._residual])
+            self._of_intensity = np.vstack([self._of_intensity, self._smoothing])
 
     def _prepare_pair_dispersion(self):
         self._smoothing = np.exp(-0.5 * (self._offset * 2 * np.pi * PAIR_SMOOTHING) ** 2)
@@ -230,24 +235,27 @@ class ForwardRun:
             self.step = min(self.step, STEP_RATE / fastest)
 
     def _nonlinear(self, spectrum):
-        offset = self._offset
-        a = fft.ifft(spectrum)
-        intensity = a.real**2 + a.imag**2
-        if not self.equation.dysthe:
+        equation = self.equation
+        if not equation.dysthe:
+            a = fft.ifft(spectrum)
+            intensity = a.real**2 + a.imag**2
             return fft.fft(-1j * self._strength * intensity * a) * self._kept
-        a_t = fft.ifft(-1j * offset * spectrum)
-        modes = fft.fft(intensity)
-        # |a|^2 is real: its slope and its mean flow come from one transform
-        pair = fft.ifft((-1j * offset + 1j * np.abs(offset)) * modes)
-        slope, flow = pair.real, pair.imag
-        rate = (6 * intensity) * a_t + (2 * (slope + 1j * flow) - 1j * intensity) * a
-        if self.equation.pair_dispersion:
-            smooth = fft.ifft(self._smoothing * modes).real - self._typical
-            shifted = fft.ifft(self._residual * spectrum)
-            rate -= 0.5j * smooth * shifted
-            other = fft.fft(smooth * a)
-            return self._strength * (fft.fft(rate) - 0.5j * self._residual * other) * self._kept
-        return self._strength * fft.fft(rate) * self._kept
+        fields = fft.ifft(self._of_a * spectrum, axis=-1, overwrite_x=True)
+        a, a_t = fields[:2]
+        intensity = a.real**2 + a.imag**2
+        slow = fft.ifft(self._of_intensity * fft.fft(intensity), axis=-1, overwrite_x=True)
+        rates = np.empty((1 + equation.pair_dispersion, a.size), complex)
+        np.multiply(2 * slow[0] - 1j * intensity, a, out=rates[0])
+        rates[0] += (6 * intensity) * a_t
+        if equation.pair_dispersion:
+            smooth = slow[1].real - self._typical
+            rates[0] -= 0.5j * smooth * fields[2]
+            np.multiply(smooth, a, out=rates[1])
+        modes = fft.fft(rates, axis=-1, overwrite_x=True)
+        if equation.pair_dispersion:
+            modes[0] -= 0.5j * self._residual * modes[1]
+        modes[0] *= self._strength * self._kept
+        return modes[0]
 
     def march(self, distances):
         """Envelopes downwave.
@@ -287,8 +295,9 @@ class ForwardRun:
             elif length > 0:
                 steps = int(np.ceil(length / self.step))
                 with np.errstate(over="ignore", invalid="ignore"):  # judged by the action below
+                    turn = self._turns(length / steps)
                     for _ in range(steps):
-                        spectrum = self._advance(spectrum, length / steps)
+                        spectrum = self._advance(spectrum, length / steps, turn)
             place = distance
             drift = np.vdot(spectrum, spectrum).real / action - 1 if action > 0 else 0.0
             if not abs(drift) < 0.02:
@@ -316,18 +325,22 @@ class ForwardRun:
         kept = phase_coherence(self._offset, self.envelope.k0 * travelled, steepness)
         return replace(downwave, values=fft.ifft(kept * fft.fft(downwave.values)))
 
-    def _advance(self, spectrum, h):
+    def _turns(self, h):
+        """Exact linear change over each part of a step that the scheme needs."""
+        nodes = {*self.stepper.nodes, 1}
+        return {node: np.exp(1j * self._linear_rate * (node * h)) for node in nodes}
+
+    def _advance(self, spectrum, h, turn):
         """One step of the integrating-factor Runge-Kutta scheme."""
         scheme = self.stepper
-        turn = {node: np.exp(1j * self._linear_rate * (node * h)) for node in {*scheme.nodes, 1}}
         stages = []
         result = spectrum.copy()
         for node, row, weight in zip(scheme.nodes, scheme.matrix, scheme.weights, strict=True):
             state = spectrum
             for coefficient, stage in zip(row, stages, strict=True):
                 if coefficient:
-                    state = state + h * coefficient * stage
+                    state = state + (h * coefficient) * stage
             stage = self._nonlinear(turn[node] * state) * turn[node].conj()
             stages.append(stage)
-            result += h * weight * stage
+            result += (h * weight) * stage
         return turn[1] * result
