@@ -183,7 +183,6 @@ def print_coherence(steepness, cells):
     print(
         f"{'steepness':11s}{'wavelengths':>12s}   " + "".join(f"{o:8.2f}" for o in centres[shown])
     )
-    reached = 0.0  # sum of (T conj P)^2 / |P|^2: what the best factors explain
     for low, high in CLASSES:
         inside = [row for value, row in zip(steepness, cells, strict=True) if low <= value < high]
         if not inside:
@@ -192,7 +191,6 @@ def print_coherence(steepness, cells):
             group = [cell for row in inside for cell in row[j :: len(DISTANCES)]]
             cross = np.sum([cell[2] for cell in group], axis=0)
             power = np.sum([cell[3] for cell in group], axis=0)
-            reached += (cross**2 / power).sum()
             model = sum(cell[3] * phase_coherence(centres, cell[1], cell[0]) for cell in group)
             label = f"{low:.2f}-{high:.2f}  {wavelengths:11.1f}"
             print(f"{label} m " + "".join(f"{v:8.2f}" for v in (cross / power)[shown]))
@@ -208,13 +206,11 @@ def print_coherence(steepness, cells):
         factor = np.exp(constant * log_unit)
         return float((power * factor**2 - 2 * cross * factor + true_power).sum()) / true_power.sum()
 
-    lowest = 1 - reached / true_power.sum()
     fit = minimize_scalar(unexplained, bounds=(0.0, 200.0), method="bounded").x
     print(f"\nPHASE_LOSS in the package {propagate.PHASE_LOSS:g}, least squares {fit:.1f}")
     print(
         f"unexplained energy of the true free waves: {unexplained(0.0):.4f} undamped, "
-        f"{unexplained(propagate.PHASE_LOSS):.4f} in the package, {unexplained(fit):.4f} fitted; "
-        f"{lowest:.4f} with the best factor for each class, distance and band"
+        f"{unexplained(propagate.PHASE_LOSS):.4f} in the package, {unexplained(fit):.4f} fitted"
     )
 
 

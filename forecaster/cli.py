@@ -488,24 +488,31 @@ def train(settings, seas, name, release, summary, folder, workers):
 @_seas("--seas", required=True, text="Seas to verify on, never trained on.")
 @_seas("--taught", required=False, text="The seas it was trained on, to set simpler forecasts up.")
 @click.option("--model", "name", metavar="NAME", help="Model to verify. Default: the shipped one.")
+@click.option(
+    "--ablation", is_flag=True,
+    help="Also train models on fewer features, to tell what each kind adds (needs --taught).",
+)  # fmt: skip
 @click.option("--record", is_flag=True, help="Also write the figures beside the model.")
 @_workers
 @click.option("--json", "as_json", is_flag=True, help="Print all figures as a JSON document.")
-def verify(seas, taught, name, record, workers, as_json):
+def verify(seas, taught, name, ablation, record, workers, as_json):
     """Measure how good a model is on seas that it was not trained on."""
     from forecaster.learning.registry import find_model, load_model, record_verification
     from forecaster.learning.verify import verify
     from forecaster.serialize import dumps
+    from forecaster.settings import TrainSettings, load_settings
     from forecaster.wording import verification_text
 
-    compared = {"plain_run": bool(taught)}
+    folder = find_model(name).folder
     measured = verify(
         load_model(name),
-        _dataset(seas, workers, **compared),
-        taught=_dataset(taught, workers, **compared),
+        _dataset(seas, workers, plain_records=None),
+        taught=_dataset(taught, workers),
+        settings=load_settings(folder / "settings.toml", TrainSettings) if ablation else None,
+        progress=_say,
     )
     if record:
-        record_verification(find_model(name).folder, measured)
+        record_verification(folder, measured)
     click.echo(dumps(measured) if as_json else verification_text(measured), nl=as_json)
 
 

@@ -310,10 +310,12 @@ def _base_rates(sea, criterion, ratios, duration):
     if criterion == "height":
         exceedance = forristall_height_exceedance
     else:
+
         def exceedance(k):
             return forristall_crest_exceedance(
                 k, hs=sea.hs, tm01=sea.tm01, depth=sea.depth, directional=False
             )
+
     waves = duration / sea.tm02
     ratios = np.asarray(ratios, float)
     predictive = predictive_base_rate(ratios, waves, sea.hs_error, exceedance=exceedance)

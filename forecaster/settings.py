@@ -455,9 +455,7 @@ class SeaRecipe(Settings):
         low=10,
         high=1000,
     )
-    duration_periods: float = setting(
-        "time stored", default=150.0, unit="Tp", low=40, high=4000
-    )
+    duration_periods: float = setting("time stored", default=150.0, unit="Tp", low=40, high=4000)
     after_periods: float = setting(
         "time kept for outcomes after the issue time", default=80.0, unit="Tp", low=4, high=2000
     )

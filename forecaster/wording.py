@@ -175,18 +175,42 @@ def verification_text(measured: dict) -> str:
     for ratio, entry in measured["ratios"].items():
         for kind in ("intervals", "horizons"):
             parts.append([f"Largest wave >= {ratio} Hs, {kind}", *_score_lines(entry[kind])])
-        if "not_scored" in entry:
-            parts.append(_wrapped(f"not scored further: {entry['not_scored']}"))
         if "baselines" in entry:
             title = f"Largest wave >= {ratio} Hs, against simpler forecasts of the same intervals"
             parts.append([title, *_baseline_lines(entry["baselines"])])
+    if "ablation" in measured:
+        parts.append(_ablation_lines(measured["ablation"]))
     return _joined(parts)
+
+
+def _ablation_lines(ablation: dict) -> list[str]:
+    """What each kind of feature adds: log skill of each set, pooled and by distance."""
+    places = list(
+        dict.fromkeys(p for row in ablation["sets"] for p in row["log_skill_by_distance"])
+    )
+    lines = [
+        f"Largest wave >= {ablation['ratio']} Hs, by features used: log skill pooled, ROC, and log "
+        "skill by distance [wavelengths]",
+        f"  {'':<20}{'pooled':<27}{'ROC':>6} " + "".join(f"{place:>8}" for place in places),
+    ]
+    for row in ablation["sets"]:
+        skills = (row["log_skill_by_distance"].get(place) for place in places)
+        cells = "".join(f"{'-' if skill is None else f'{skill:.3f}':>8}" for skill in skills)
+        lines.append(
+            f"  {row['features']:<20}{_interval(row['log_skill']):<27}{row['roc'][0]:>6.3f} {cells}"
+        )
+    lines += [
+        f"  gain in log score from {row['from']!r} to {row['to']!r}: "
+        f"{_interval((row['gain_in_log_score'], *row['gain_90']))}"
+        for row in ablation["gains"]
+    ]
+    return lines
 
 
 def _score_lines(rows: list[dict]) -> list[str]:
     """A table of counts and scores; calibration is a slope where it can be fitted, else a bias."""
     lines = [
-        f"  {'':<22}{'seas':>6}{'cases':>9}{'events':>8}  {'log skill':<27}{'Brier':>6}{'ROC':>6}"
+        f"  {'':<22}{'seas':>6}{'cases':>9}{'events':>8}  {'log skill':<27}{'Brier':>6}{'ROC':>7}"
         "  calibration"
     ]
     for row in rows:
@@ -198,7 +222,7 @@ def _score_lines(rows: list[dict]) -> list[str]:
         name = "line.slope" if "line.slope" in scores else "mean bias"
         lines.append(
             f"{counts}{_interval(scores['log skill']):<27}{scores['Brier skill'][0]:>6.2f}"
-            f"{scores['ROC'][0]:>6.2f}  {name.removeprefix('line.')} {_interval(scores[name])}"
+            f"{scores['ROC'][0]:>7.3f}  {name.removeprefix('line.')} {_interval(scores[name])}"
         )
     return lines
 
@@ -213,7 +237,7 @@ def _baseline_lines(rows: list[dict]) -> list[str]:
 
 
 def _interval(values) -> str:
-    value, low, high = (f"{number:.2g}" for number in values)
+    value, low, high = (f"{number:.3g}" for number in values)
     return f"{value} ({low} to {high})"
 
 

@@ -29,6 +29,7 @@ from forecaster.waves.propagate import ForwardRun
 
 VIEWS = 1  # purpose of the random numbers that draw views (see `member_generator`)
 NAMES = tuple(FEATURES)
+PLAIN_RECORDS = 2  # records of a taught sea for which the plain Dysthe run is computed too
 FEATURES_EDITION = 1  # raised when a feature's or a view's numbers change: rows are then rebuilt
 
 
@@ -144,7 +145,9 @@ def _with_gaps(record, share, generator):
     return bridge_gaps(gappy, longest=0.25 * PEAK_PERIOD)
 
 
-def member_rows(recipe: SeaRecipe, member: int, sea: dict, *, plain_records: int = 0) -> Dataset:
+def member_rows(
+    recipe: SeaRecipe, member: int, sea: dict, *, plain_records: int | None = 0
+) -> Dataset:
     """All rows of one member.
 
     Parameters
@@ -153,8 +156,8 @@ def member_rows(recipe: SeaRecipe, member: int, sea: dict, *, plain_records: int
     member : int
     sea : dict of arrays
         As `ensemble.simulate` returns.
-    plain_records : int
-        For how many of its records to compute the plain Dysthe run, a baseline.
+    plain_records : int or None
+        For how many of its records to compute the plain Dysthe run, a baseline; None for all.
     """
     generator = member_generator(recipe.root_seed, member, VIEWS)
     elevation, dt = sea["elevation"].astype(float), float(sea["dt"])
@@ -175,7 +178,7 @@ def member_rows(recipe: SeaRecipe, member: int, sea: dict, *, plain_records: int
             ahead = look_ahead(record, reached * spacing)
             edges = interval_edges(record.end, ahead.sea.tp, count)
             plain = np.full((reached.size, count), np.nan)
-            if number < plain_records:
+            if plain_records is None or number < plain_records:
                 plain = _plain_heights(ahead, edges)
         except (InputError, NumericsError):
             continue  # too coarse for its own waves, or a run that fails: not scored either
@@ -219,7 +222,7 @@ def _plain_heights(ahead, edges):
     return heights / ahead.sea.hs
 
 
-def rows_hash(recipe: SeaRecipe, plain_records: int) -> str:
+def rows_hash(recipe: SeaRecipe, plain_records: int | None) -> str:
     """Hash of what decides the rows of a recipe's members (not how many members there are)."""
     table = settings_to_table(recipe)
     del table["members"]
@@ -231,7 +234,7 @@ def build(
     folder,
     *,
     workers: int = 1,
-    plain_records: int = 0,
+    plain_records: int | None = PLAIN_RECORDS,
     progress: Callable[[str, int, int], None] = lambda step, done, total: None,
 ) -> Dataset:
     """Rows of all members of a recipe, simulating those seas that `folder` does not hold.
@@ -244,7 +247,7 @@ def build(
         what is finished is not computed again.
     workers : int
         Processes.
-    plain_records : int
+    plain_records : int or None
         As in `member_rows`.
     progress : callable
         Called with (what is done, members done, members wanted).
@@ -252,9 +255,7 @@ def build(
     import joblib
 
     folder = Path(folder)
-    seas = generate(
-        recipe, folder / "seas", workers=workers, progress=partial(progress, "seas")
-    )
+    seas = generate(recipe, folder / "seas", workers=workers, progress=partial(progress, "seas"))
     edition = rows_hash(recipe, plain_records)
     shards = ShardFolder(folder / f"rows-{edition[:12]}", plan_hash=edition)
     finished = shards.finished()

@@ -151,7 +151,7 @@ def _envelope_engine(recipe, generator, drawn, hs, kp, spacing):
         # from the moving frame back to one clock: the sea is periodic in time
         shifted = fft.ifft(fft.fft(row.values) * np.exp(1j * offset * row.start))
         still = Envelope(shifted, dt, 0.0, omega0, k0)
-        elevation[place], _ = elevation_of(still)
+        elevation[place], _ = elevation_of(still, refine=2)
     return elevation, 1.0
 
 

@@ -78,9 +78,7 @@ def installed_models(folder: Path | None = None) -> tuple[ModelCard, ...]:
     """Cards of all models in a folder (the shipped ones if None), by name and version."""
     root = models_folder() if folder is None else Path(folder)
     cards = [_read_card(path.parent) for path in sorted(root.glob("*/*/card.json"))]
-    return tuple(
-        sorted(cards, key=lambda c: (c.identity.name, _version_key(c.identity.version)))
-    )
+    return tuple(sorted(cards, key=lambda c: (c.identity.name, _version_key(c.identity.version))))
 
 
 def find_model(name: str | None = None, folder: Path | None = None) -> ModelCard:

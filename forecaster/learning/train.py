@@ -153,14 +153,18 @@ def calibration_rows(dataset: Dataset) -> np.ndarray:
 def _calibrated_line(log_odds, reached, sea, generator):
     """Calibration line and its covariance from resampled seas."""
     line = fit_platt(log_odds.ravel(), reached.ravel(), smoothing=False)
+    if not line.slope > 0:
+        raise NumericsError(
+            f"the calibration line falls with the trees' log odds (slope {line.slope:g}): they "
+            "have learnt nothing that holds on other seas",
+            achieved=line,
+        )
     seas, place = np.unique(sea, return_inverse=True)
     lines = []
     for _ in range(_REPLICATES):
         weights = np.bincount(generator.integers(seas.size, size=seas.size), minlength=seas.size)
         spread = np.broadcast_to(weights[place][:, None], log_odds.shape).ravel().astype(float)
-        resampled = fit_platt(
-            log_odds.ravel(), reached.ravel(), smoothing=False, weights=spread
-        )
+        resampled = fit_platt(log_odds.ravel(), reached.ravel(), smoothing=False, weights=spread)
         lines.append((resampled.intercept, resampled.slope))
     return line, np.cov(np.array(lines).T)
 

@@ -8,10 +8,10 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 
-from forecaster.errors import NumericsError
 from forecaster.learning.dataset import Dataset
 from forecaster.learning.features import WAVES_PER_INTERVAL
 from forecaster.learning.model import Model
@@ -29,7 +29,7 @@ from forecaster.learning.scores import (
     reliability_curve,
     roc_area,
 )
-from forecaster.learning.train import HORIZON_COVERAGE, horizon_groups, split_seas
+from forecaster.learning.train import HORIZON_COVERAGE, fit, horizon_groups
 from forecaster.settings import TrainSettings
 from forecaster.waves.heights import (
     excess_kurtosis_from_bfi,
@@ -40,6 +40,7 @@ from forecaster.waves.heights import (
 
 REPLICATES = 400
 MIN_EVENTS_FOR_LINE = 200
+RELIABILITY_EDGES = np.array([0, 0.002, 0.01, 0.05, 0.1, 0.2, 0.4, 0.6, 0.8, 1.0])
 FLOOR = 1e-6  # of a baseline's probability, so that one surprise is not an infinite score
 FEATURE_SETS = {
     "statistics": (
@@ -71,7 +72,7 @@ ABLATIONS = {
 class Row:
     """One line of a table: what was scored, on how much, and scores with by-sea intervals.
 
-    `scores` maps a name to (value, low, high), or to None where there are too few events.
+    `scores` maps a name to (value, low, high); a score that too few events allow is absent.
     """
 
     label: str
@@ -79,13 +80,13 @@ class Row:
     seas_with_events: int
     cases: int
     events: int
-    scores: dict[str, tuple[float, float, float] | None]
+    scores: dict[str, tuple[float, float, float]]
 
 
 def forecast_rows(dataset: Dataset, *, coverage: float = HORIZON_COVERAGE) -> Dataset:
-    """The intervals a forecast would show: downwave, after the issue time, half measured."""
+    """The intervals a forecast would show: half measured, or at the sensor itself."""
     return dataset.rows(
-        (dataset.column("coverage") >= coverage) & (dataset.column("distance_wavelengths") > 0)
+        (dataset.column("coverage") >= coverage) | (dataset.column("distance_wavelengths") == 0)
     )
 
 
@@ -94,15 +95,13 @@ def score_row(label: str, p, y, sea, *, generator, replicates=REPLICATES) -> Row
     p, y = np.clip(np.asarray(p, float), FLOOR, 1 - FLOOR), np.asarray(y, bool)
     events = int(y.sum())
     with_events = int(np.unique(sea[y]).size)
-    scores: dict[str, tuple[float, float, float] | None] = {}
+    scores: dict[str, tuple[float, float, float]] = {}
     functions = {"log skill": log_skill, "Brier skill": brier_skill, "ROC": roc_area,
                  "mean bias": mean_bias}  # fmt: skip
     if events >= MIN_EVENTS_FOR_LINE:
         functions["line"] = calibration_line
     if 0 < events < y.size and with_events > 1:
-        found = bootstrap_by_group(
-            functions, p, y, sea, generator=generator, replicates=replicates
-        )
+        found = bootstrap_by_group(functions, p, y, sea, generator=generator, replicates=replicates)
         scores = {name: (s.value, s.low, s.high) for name, s in found.items()}
     return Row(label, int(np.unique(sea).size), with_events, int(y.size), events, scores)
 
@@ -126,7 +125,7 @@ def model_table(model: Model, dataset: Dataset, ratio: float, *, generator) -> l
 
 def _bands(name, values, edges):
     last = len(edges) - 2
-    for i, (low, high) in enumerate(zip(edges[:-1], edges[1:], strict=True)):
+    for i, (low, high) in enumerate(pairwise(edges)):
         upper = values <= high + 1e-6 if i == last else values < high
         yield f"{name} {low:g}-{high:g}", (values >= low) & upper
 
@@ -223,16 +222,12 @@ def baseline_table(model, taught, dataset, ratio, *, generator) -> list[dict]:
     table = []
     for name, q in baselines(teach, shown, ratio).items():
         q = np.clip(q, FLOOR, 1 - FLOOR)
-        gain = bootstrap_difference(
-            logarithmic_score, q, p, y, shown.sea, generator=generator, replicates=REPLICATES
-        )
         table.append(
             {
                 "baseline": name,
                 "log_skill": float(log_skill(q, y)),
                 "roc": float(roc_area(q, y)),
-                "gain_in_log_score": float(gain.value),
-                "gain_90": [float(gain.low), float(gain.high)],
+                **_gain(q, p, y, shown.sea, generator),
             }
         )
     return table
@@ -240,48 +235,61 @@ def baseline_table(model, taught, dataset, ratio, *, generator) -> list[dict]:
 
 def ablation(
     taught: Dataset, dataset: Dataset, settings: TrainSettings, ratio: float, *, generator,
-    fit: Callable, progress: Callable[[str], None] = lambda message: None,
-) -> list[dict]:  # fmt: skip
-    """What each kind of feature adds: one model per set, fitted alike, scored alike."""
-    table, scored = [], {}
+    progress: Callable[[str], None] = lambda message: None,
+) -> dict:  # fmt: skip
+    """What each kind of feature adds: one model per set, fitted alike, scored alike.
+
+    Returns
+    -------
+    dict
+        ``sets``: scores of each set of features, downwave and at the sensor itself; ``gains``:
+        gain in mean log score from one set to another, with its by-sea interval.
+    """
     shown = forecast_rows(dataset)
     y = shown.height >= ratio
-    for label, sets in ABLATIONS.items():
+    sets, scored = [], {}
+    for label, parts in ABLATIONS.items():
         progress(f"ablation: {label}")
-        names = tuple(name for part in sets for name in FEATURE_SETS[part])
+        names = tuple(name for part in parts for name in FEATURE_SETS[part])
         model = fit(
             taught, settings, name="ablation", version="0", names=names, criteria=("height",)
         )
         p = model.intervals(shown.features, shown.names, [ratio]).probability[:, 0]
         scored[label] = np.clip(p, FLOOR, 1 - FLOOR)
         row = score_row(label, p, y, shown.sea, generator=generator)
-        by_distance = {
-            f"{d:g}": float(log_skill(scored[label][shown.distance == d], y[shown.distance == d]))
-            for d in np.unique(shown.distance)
-        }
-        table.append(
+        places = {f"{d:g}": shown.distance == d for d in np.unique(shown.distance)}
+        sets.append(
             {
                 "features": label,
-                "log_skill": list(row.scores["log skill"]),
-                "roc": list(row.scores["ROC"]),
-                "log_skill_by_distance": by_distance,
+                "log_skill": row.scores["log skill"],
+                "roc": row.scores["ROC"],
+                "log_skill_by_distance": {
+                    place: float(log_skill(scored[label][mask], y[mask]))
+                    for place, mask in places.items()
+                    if 0 < y[mask].sum() < mask.sum()
+                },
             }
         )
-    for pair in (("BFI and statistics", "+ scattering"), ("+ forward run", "all")):
-        gain = bootstrap_difference(
-            logarithmic_score, scored[pair[0]], scored[pair[1]], y, shown.sea,
-            generator=generator, replicates=REPLICATES,
-        )  # fmt: skip
-        table.append(
-            {"from": pair[0], "to": pair[1], "gain_in_log_score": float(gain.value),
-             "gain_90": [float(gain.low), float(gain.high)]}
-        )  # fmt: skip
-    return table
+    pairs = (("BFI and statistics", "+ scattering"), ("+ forward run", "all"))
+    gains = [
+        {"from": less, "to": more, **_gain(scored[less], scored[more], y, shown.sea, generator)}
+        for less, more in pairs
+    ]
+    return {"ratio": ratio, "sets": sets, "gains": gains}
+
+
+def _gain(worse, better, y, sea, generator) -> dict:
+    """Gain in mean log score from one forecast to another, with its by-sea interval."""
+    gain = bootstrap_difference(
+        logarithmic_score, worse, better, y, sea, generator=generator, replicates=REPLICATES
+    )
+    return {"gain_in_log_score": gain.value, "gain_90": [gain.low, gain.high]}
 
 
 def verify(
     model: Model, dataset: Dataset, *, taught: Dataset | None = None,
-    ratios: tuple[float, ...] = (1.6, 2.0), seed: int = 0,
+    settings: TrainSettings | None = None, ratios: tuple[float, ...] = (1.6, 2.0), seed: int = 0,
+    progress: Callable[[str], None] = lambda message: None,
 ) -> dict:  # fmt: skip
     """Everything that is measured of a model on seas never trained on, ready for JSON.
 
@@ -292,10 +300,14 @@ def verify(
         Of the verification recipe.
     taught : Dataset or None
         The training seas: with them, baselines are calibrated and compared.
+    settings : TrainSettings or None
+        With these too, an ablation is fitted and scored.
     ratios : tuple of float
         Height ratios.
     seed : int
         Of the resampling.
+    progress : callable
+        Told what is being done.
     """
     generator = np.random.default_rng(seed)
     result = {
@@ -308,24 +320,30 @@ def verify(
         shown = forecast_rows(dataset)
         p = model.intervals(shown.features, shown.names, [ratio]).probability[:, 0]
         y = shown.height >= ratio
+        tables = {"intervals": model_table, "horizons": horizon_table}
         entry = {
-            "intervals": [_as_dict(r) for r in model_table(model, dataset, ratio, generator=generator)],
-            "horizons": [_as_dict(r) for r in horizon_table(model, dataset, ratio, generator=generator)],
-        }  # fmt: skip
-        try:
+            name: [_as_dict(row) for row in table(model, dataset, ratio, generator=generator)]
+            for name, table in tables.items()
+        }
+        if 0 < y.sum() < y.size:
+            parts = isotonic_decomposition(p, y)
+            entry["brier_parts"] = {name: float(v) for name, v in parts._asdict().items()}
             entry["precision_recall"] = float(precision_recall_area(p, y))
-            entry["brier_parts"] = {k: float(v) for k, v in isotonic_decomposition(p, y)._asdict().items()}  # fmt: skip
             entry["reliability"] = _reliability(p, y)
-        except NumericsError as error:
-            entry["not_scored"] = str(error)
-        if taught is not None:
-            entry["baselines"] = baseline_table(model, taught, dataset, ratio, generator=generator)
+            if taught is not None:
+                entry["baselines"] = baseline_table(
+                    model, taught, dataset, ratio, generator=generator
+                )
         result["ratios"][f"{ratio:g}"] = entry
+    if taught is not None and settings is not None:
+        result["ablation"] = ablation(
+            taught, dataset, settings, ratios[0], generator=generator, progress=progress
+        )
     return result
 
 
-def _reliability(p, y):
-    curve = reliability_curve(p, y, bins=np.array([0, 0.002, 0.01, 0.05, 0.1, 0.2, 0.4, 0.6, 0.8, 1.0]))
+def _reliability(p, y) -> dict:
+    curve = reliability_curve(p, y, bins=RELIABILITY_EDGES)
     return {name: np.asarray(getattr(curve, name)).tolist() for name in curve.__slots__}
 
 
@@ -336,11 +354,5 @@ def _as_dict(row: Row) -> dict:
         "seas_with_events": row.seas_with_events,
         "cases": row.cases,
         "events": row.events,
-        "scores": {k: [round(float(x), 5) for x in v] for k, v in row.scores.items()},
+        "scores": {name: [round(float(x), 5) for x in v] for name, v in row.scores.items()},
     }
-
-
-def held_out(dataset: Dataset, settings: TrainSettings) -> Dataset:
-    """The calibration seas of a training set (for tables that need no fresh seas)."""
-    _, calibrate_on = split_seas(dataset, settings)
-    return dataset.rows(np.isin(dataset.sea, calibrate_on))

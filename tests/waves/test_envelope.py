@@ -9,6 +9,7 @@ from hypothesis import strategies as st
 
 from forecaster.errors import InputError
 from forecaster.waves.envelope import (
+    SAMPLES_PER_PERIOD,
     BoundWaves,
     continued,
     coverage,
@@ -272,7 +273,7 @@ def test_time_of_the_record_is_time_of_the_envelope(start):
     phase = envelope.values[peak] * np.exp(-1j * envelope.omega0 * envelope.times[peak])
     ahead = OMEGA0 * (envelope.times[peak] - start - 300)
     assert np.angle(phase * np.exp(1j * ahead)) == pytest.approx(0, abs=0.02)
-    assert envelope.dt <= 10 / 8 * 1.001
+    assert envelope.dt <= 10 / SAMPLES_PER_PERIOD * 1.001
     turns = envelope.omega0 * envelope.dt * envelope.values.size / TURN
     assert turns == pytest.approx(round(turns), abs=1e-9)
 
