@@ -355,7 +355,16 @@ def _overall(codes: list[int]) -> int:
 @click.argument("record", metavar="RECORD")
 @_reading
 @click.option("--json", "as_json", is_flag=True, help="Print a JSON document.")
-def check(record, as_json, **options):
+@click.option(
+    "--scattering",
+    is_flag=True,
+    help="Also the scattering spectrum: which wave groups would keep together, and where they are.",
+)
+@click.option(
+    "--figure", type=Path, metavar="FILE",
+    help="Draw the scattering spectrum: .png, .svg or .pdf (with --scattering).",
+)  # fmt: skip
+def check(record, as_json, scattering, figure, **options):
     """Quality and sea state of a record, no forecast.
 
     RECORD is a file or - for standard input.
@@ -364,13 +373,24 @@ def check(record, as_json, **options):
     from forecaster.serialize import check_document, dumps, program_version
     from forecaster.wording import check_text
 
+    if figure is not None and not scattering:
+        raise click.UsageError("--figure draws what --scattering finds: give both")
+    _check_files((record,), figure, None)
     done = forecasting.check(record, **options)
-    found = done.record, done.quality, done.sea_state
+    failed = done.quality.verdict == "fail"
+    spectrum = forecasting.scattering(done) if scattering and not failed else None
+    found = done.record, done.quality, done.sea_state, spectrum
     if as_json:
         click.echo(dumps(check_document(*found, program_version=program_version())))
     else:
         click.echo(check_text(*found), nl=False)
-    return NO_FORECAST if done.quality.verdict == "fail" else ANSWERED
+    if figure is not None and spectrum is not None:
+        from forecaster import plots
+        from forecaster.storage import write_atomically
+
+        drawn = plots.scattering_figure(done.record, done.sea_state, spectrum)
+        write_atomically(figure, plots.image_bytes(drawn, _format_of(figure)))
+    return NO_FORECAST if failed else ANSWERED
 
 
 def _part(context, parameter, value: str) -> tuple[int, int]:
@@ -470,15 +490,15 @@ def _dataset(seas, workers: int, **options):
 def train(settings, seas, name, release, summary, folder, workers):
     """Fit and calibrate a model by SETTINGS (TOML) on synthetic seas."""
     from forecaster.learning.registry import save_model
-    from forecaster.learning.train import fit
+    from forecaster.learning.train import fit, taught_on
     from forecaster.settings import TrainSettings, load_settings, settings_to_toml
 
     plan = load_settings(settings, TrainSettings)
     taught = _dataset(seas, workers)
-    model = fit(taught, plan, name=name, version=release, progress=_say)
+    model = fit(taught, plan, name=name, version=release, workers=workers, progress=_say)
     card = save_model(
         model, folder, probe=taught.features, names=taught.names, summary=summary,
-        card={"recipes": [Path(recipe).name for recipe, _ in seas]},
+        card={"taught_on": taught_on([Path(recipe).name for recipe, _ in seas], taught, plan)},
         settings_toml=settings_to_toml(plan),
     )  # fmt: skip
     click.echo(card.folder)
@@ -509,6 +529,7 @@ def verify(seas, taught, name, ablation, record, workers, as_json):
         _dataset(seas, workers, plain_records=None),
         taught=_dataset(taught, workers),
         settings=load_settings(folder / "settings.toml", TrainSettings) if ablation else None,
+        workers=workers,
         progress=_say,
     )
     if record:

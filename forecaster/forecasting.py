@@ -41,6 +41,7 @@ from forecaster.learning.registry import load_model
 from forecaster.learning.train import HORIZON_COVERAGE
 from forecaster.records import read as reading
 from forecaster.records.quality import check_quality, peak_period, remove_drift, without_spikes
+from forecaster.serialize import program_version
 from forecaster.waves.heights import (
     forristall_crest_exceedance,
     forristall_height_exceedance,
@@ -49,12 +50,13 @@ from forecaster.waves.heights import (
 )
 from forecaster.waves.linear import group_velocity
 from forecaster.waves.scattering import group_content
+from forecaster.waves.scattering_spectrum import ScatteringSpectrum, scattering_spectrum
 from forecaster.waves.spectrum import sea_state
 
-PROGRAM_VERSION = "0.1.0"
 DEFAULT_WINDOW = 1800.0  # s
 DEFAULT_HORIZON = 1800.0  # s, at the sensor itself
 MAX_INTERVALS = 200
+MAX_DISTANCE = 2e7  # m, half way round the Earth
 MAX_OFF_AXIS = 30.0  # deg
 SHOWN_RATIOS = {
     "height": np.arange(1.0, 2.81, 0.2).round(2),
@@ -171,10 +173,46 @@ def check(
     quality = check_quality(record)
     if quality.verdict == "fail":
         return Checked(record, quality, None)
-    record = without_spikes(record)
+    record = _measured_part(without_spikes(record))
     record = reading.bridge_gaps(record, longest=0.25 * peak_period(record))
     sea = sea_state(record.elevation, record.dt, depth=record.depth, spread=spread)
     return Checked(record, quality, sea)
+
+
+def _measured_part(record: Record) -> Record:
+    """The record from the first to the last sample measured: the issue time is one of those."""
+    measured = np.flatnonzero(~np.isnan(record.elevation))
+    first, last = int(measured[0]), int(measured[-1])
+    if last - first + 1 == record.n:
+        return record
+    warnings = record.warnings
+    if last < record.n - 1:
+        late = (record.n - 1 - last) * record.dt
+        warnings = (*warnings, f"Nothing was measured in the last {late:.4g} s: "
+                    "the forecast begins before them.")  # fmt: skip
+    return record.step(
+        "gaps at the ends cut off",
+        elevation=record.elevation[first : last + 1],
+        start=record.start + first * record.dt,
+        warnings=warnings,
+    )
+
+
+def scattering(checked: Checked) -> ScatteringSpectrum:
+    """Scattering spectrum of a checked record: eigenvalues, groups, energy shares.
+
+    Raises
+    ------
+    QualityError
+        If the record failed its quality tests.
+    InputError
+        For gaps too long to be bridged.
+    NumericsError
+        If the eigenvalues found cannot be certified.
+    """
+    if checked.sea_state is None:
+        raise QualityError(_failed_tests(checked.quality), report=checked.quality)
+    return scattering_spectrum(checked.record, checked.sea_state)
 
 
 @lru_cache(maxsize=4)
@@ -195,8 +233,9 @@ def score(
     distance : float [m]
         Along the waves, from sensor to target; 0 at the sensor.
     horizon : float [s], optional
-        From the issue time (at distance 0) or from the first interval shown.  Default: the
-        intervals whose waves are at least half measured; 30 minutes at the sensor.
+        From the issue time (from the arrival of the first waves not yet passed, if a current
+        delays them).  Default: the intervals whose waves are at least half measured; 30 minutes
+        at the sensor.
     at : float [s] or ISO 8601 text, optional
         Issue time; the record's end by default.  Later rows change nothing.
     window : float [s]
@@ -229,9 +268,10 @@ def score(
     QualityError, OutsideDomain
         With ``strict=True`` only.
     """
-    if not (isfinite(distance) and distance >= 0):
+    if not 0 <= distance <= MAX_DISTANCE:
         raise InputError(
-            f"distance must be 0 or a positive number of metres downwave, got {distance!r}"
+            f"distance must be 0 or a positive number of metres downwave, up to {MAX_DISTANCE:g}, "
+            f"got {distance!r}"
         )
     if horizon is not None and not (isfinite(horizon) and horizon > 0):
         raise InputError(f"horizon must be a positive number of seconds, got {horizon!r}")
@@ -371,7 +411,7 @@ def _unanswered(checked, fitted, scene, domain, target, caveats, shift) -> Forec
         domain=domain,
         caveats=caveats,
         model=fitted.identity,
-        program_version=PROGRAM_VERSION,
+        program_version=program_version(),
     )
 
 
@@ -411,7 +451,7 @@ def _answered(base: Forecast, fitted, scene, shift) -> Forecast:
 
 def _median_heights(fitted, table, names) -> np.ndarray:
     """(m,) height ratio that the largest wave of each interval exceeds as often as not."""
-    grid = np.linspace(*CRITERIA["height"], 23)
+    grid = np.linspace(*CRITERIA["height"], 12)
     p = fitted.intervals(table, names, grid).probability
     return np.array([np.interp(-0.5, -row, grid) for row in p])
 
@@ -529,5 +569,5 @@ def _without_quality(checked, fitted) -> Forecast:
         domain=Domain("outside", (_failed_tests(checked.quality),)),
         caveats=CAVEATS + checked.record.warnings,
         model=fitted.identity,
-        program_version=PROGRAM_VERSION,
+        program_version=program_version(),
     )

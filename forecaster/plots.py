@@ -17,15 +17,17 @@ from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
 from matplotlib.ticker import FuncFormatter
 
-from forecaster.datatypes import Forecast
+from forecaster.datatypes import Forecast, Record, SeaState
 from forecaster.errors import InputError
 from forecaster.waves.heights import zero_crossing_waves
+from forecaster.waves.scattering_spectrum import DRIFT_DISTANCE, ScatteringSpectrum
 from forecaster.wording import one_in, percent
 
 FORMATS = ("png", "svg", "pdf")
 # Told apart with every common kind of colour vision: Okabe & Ito 2008, Color Universal Design.
 FORECAST, BASE, THRESHOLD, SEA = "#0072B2", "#222222", "#D55E00", "#4d4d4d"
 LARGEST_WAVES = 3
+NUMBERED = 8  # eigenvalues
 _RESOLUTION = 150  # dots per inch
 _LOWEST = 1e-5  # of the axis of probabilities
 
@@ -54,6 +56,101 @@ def forecast_figure(forecast: Forecast) -> Figure:
     # a file name may hold "$", which would otherwise be read as mathematics
     figure.suptitle(_title(forecast), parse_math=False, ha="left", x=0.01, fontsize=13)
     return figure
+
+
+def scattering_figure(record: Record, sea: SeaState, spectrum: ScatteringSpectrum) -> Figure:
+    """The record with its envelope and groups, and its eigenvalues by height and group speed.
+
+    The highest eigenvalues are numbered, and bear the same number where they live in the record.
+    """
+    figure = Figure(figsize=(11, 7.6), layout="constrained")
+    above, below = figure.subplots(2, 1, height_ratios=(1, 1.25))
+    _draw_groups(above, record, spectrum)
+    _draw_eigenvalues(below, sea, spectrum)
+    told = "no group of waves would keep together by itself"
+    if spectrum.eigenvalues:
+        largest = spectrum.eigenvalues[0]
+        told = (
+            f"largest group that would keep together by itself: {largest.height:.1f} m "
+            f"({largest.height_ratio:.1f} Hs)"
+        )
+    figure.suptitle(
+        f"{_plain_name(record)}: {told}", parse_math=False, ha="left", x=0.01, fontsize=13
+    )
+    return figure
+
+
+def _draw_groups(axes, record: Record, spectrum: ScatteringSpectrum) -> None:
+    envelope, end = spectrum.envelope, record.end
+    axes.plot((record.times - end) / 60, record.elevation, color=SEA, lw=0.6)
+    inside = (envelope.times >= record.start) & (envelope.times <= end)
+    times, height = (envelope.times[inside] - end) / 60, np.abs(envelope.values[inside])
+    axes.plot(times, height, color=FORECAST, lw=1.4)
+    for group in spectrum.groups:
+        axes.axvspan(
+            (group.start - end) / 60, (group.end - end) / 60, color=FORECAST, alpha=0.12,
+            lw=1.5, ec="white",
+        )  # fmt: skip
+    top = 1.15 * height.max()
+    for number, item in enumerate(spectrum.eigenvalues[:NUMBERED], start=1):
+        axes.text(
+            (item.time - end) / 60, top, str(number), color=THRESHOLD, fontweight="bold",
+            ha="center", va="bottom",
+        )  # fmt: skip
+    axes.set_ylim(top=1.35 * height.max())
+    axes.set_xlim((record.start - end) / 60, 0)
+    axes.set_title(
+        "The waves at the sensor, their envelope (blue) and the wave groups (shaded); "
+        "numbers: see below",
+        fontsize=10, loc="left",
+    )  # fmt: skip
+    axes.set_xlabel("minutes, counted from the end of the record")
+    axes.set_ylabel("surface [m]")
+
+
+def _draw_eigenvalues(axes, sea: SeaState, spectrum: ScatteringSpectrum) -> None:
+    items = spectrum.eigenvalues
+    axes.set_title(
+        f"{len(items)} eigenvalues, each a group that would keep together, alone on the water: "
+        f"{100 * spectrum.discrete_share:.0f} % of the wave energy; "
+        f"{100 * spectrum.continuous_share:.0f} % is in waves that disperse",
+        fontsize=10, loc="left",
+    )  # fmt: skip
+    axes.set_xlabel(
+        f"group speed against that of the main waves, {spectrum.carrier_speed:.1f} m/s [%]"
+    )
+    axes.set_ylabel("height, crest to trough\n[significant wave heights, Hs]")
+    axes.axvline(0, color="#bbbbbb", lw=0.8, zorder=0)
+    if not items:
+        _say(axes, "no group of waves would keep together")
+        return
+    offsets = [100 * item.speed_offset for item in items]
+    axes.vlines(offsets, 0, [item.height_ratio for item in items], color=FORECAST, lw=1, alpha=0.4)
+    axes.plot(
+        offsets, [item.height_ratio for item in items], "o", color=FORECAST, ms=6, mec="white"
+    )
+    for number, item in enumerate(items[:NUMBERED], start=1):
+        axes.annotate(
+            f"{number}: {item.height:.1f} m" if number <= 3 else str(number),
+            (100 * item.speed_offset, item.height_ratio), xytext=(6, 3),
+            textcoords="offset points", color=THRESHOLD, fontweight="bold", fontsize=9,
+        )  # fmt: skip
+    axes.axhspan(0, spectrum.drift, color="#999999", alpha=0.5, lw=0, zorder=0)
+    notes = (
+        (0.01, "left", "slower: shorter waves"),
+        (0.99, "right", "faster: longer waves"),
+    )
+    for place, side, text in notes:
+        axes.text(place, 0.97, text, transform=axes.transAxes, ha=side, va="top", fontsize=9)
+    axes.text(
+        0.99, 0.89,
+        f"grey band, {100 * spectrum.drift:.0f} % of Hs:\nby so much heights drift\n"
+        f"over {DRIFT_DISTANCE} wavelengths",
+        transform=axes.transAxes, ha="right", va="top", fontsize=9, color=SEA,
+    )  # fmt: skip
+    axes.set_ylim(0, 1.15 * items[0].height_ratio)
+    metres = axes.secondary_yaxis("right", functions=(lambda x: x * sea.hs, lambda x: x / sea.hs))
+    metres.set_ylabel("the same [m]")
 
 
 def image_bytes(figure: Figure, form: str) -> bytes:
@@ -90,8 +187,7 @@ def inline_svg(figure: Figure) -> str:
 
 
 def _title(forecast: Forecast) -> str:
-    name = forecast.record.source.rsplit("/", 1)[-1]
-    name = name.encode("ascii", "backslashreplace").decode("ascii")
+    name = _plain_name(forecast.record)
     if not forecast.answered:
         return f"{name}: no forecast"
     chance = f"{percent(forecast.probability)} ({one_in(forecast.probability)})"
@@ -103,6 +199,11 @@ def _title(forecast: Forecast) -> str:
         f"{name}: {chance} for a {noun} of {target.threshold_m:.1f} m or more {where}, "
         f"within {minutes:.0f} min"
     )
+
+
+def _plain_name(record: Record) -> str:
+    name = record.source.rsplit("/", 1)[-1]
+    return name.encode("ascii", "backslashreplace").decode("ascii")
 
 
 def _draw_record(axes, forecast: Forecast) -> None:

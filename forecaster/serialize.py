@@ -248,6 +248,74 @@ GROUP = _object(
     ("amplification", "amplification", _or_null(POSITIVE), "of the envelope at the focus"),
 )
 
+SCATTERING = _object(
+    ("carrier_rad_per_s", "envelope.omega0", POSITIVE, "frequency of the carrier [rad/s]"),
+    ("carrier_speed_m_per_s", "carrier_speed", POSITIVE, "its group speed [m/s]"),
+    (
+        "eigenvalues",
+        "eigenvalues",
+        _list(
+            _object(
+                ("eigenvalue", "value", COMPLEX, "of q = conj(k0 A)/sqrt(2) over omega0 t"),
+                ("time", "time", TIME, "where in the record it lives"),
+                ("height_m", "height", POSITIVE, "envelope height 2|A| of its soliton [m]"),
+                ("height_over_hs", "height_ratio", POSITIVE, "the same over Hs"),
+                ("group_speed_m_per_s", "speed", POSITIVE, "of its soliton [m/s]"),
+                ("group_speed_offset", "speed_offset", NUMBER, "over the carrier's, less 1"),
+            )
+        ),
+        "discrete Zakharov-Shabat eigenvalues of the whole record, highest first",
+    ),
+    (
+        "groups",
+        "groups",
+        _list(
+            _object(
+                ("start", "start", TIME, "start of its window"),
+                ("end", "end", TIME, "end of its window"),
+                ("time", "peak_time", TIME, "of its envelope maximum"),
+                ("height_m", "height", POSITIVE, "envelope height 2|A| there [m]"),
+                ("eigenvalues", "eigenvalues", _list(COMPLEX), "of the window"),
+                (
+                    "focus_distance_m",
+                    "focus_distance",
+                    _or_null(NUMBER),
+                    "downwave [m]; null: does not focus",
+                ),
+                ("amplification", "amplification", _or_null(POSITIVE), "of the envelope there"),
+            )
+        ),
+        "wave groups of the record, in order of time",
+    ),
+    ("energy_discrete", "discrete_share", POSITIVE, "share of the energy in the eigenvalues"),
+    ("energy_continuous", "continuous_share", POSITIVE, "share in waves that disperse"),
+    (
+        "periodic",
+        "periodic",
+        _object(
+            ("points", "points", COUNT, "of the main spectrum above the axis"),
+            ("unstable_modes", "unstable_modes", COUNT, "pairs of them joined above the axis"),
+            ("open_bands", "open_bands", COUNT, "pairs that lie apart"),
+            ("single_points", "single_points", COUNT, "points without a partner above the axis"),
+            ("widest_band_over_hs", "widest_band", POSITIVE, "as the height of a soliton over Hs"),
+        ),
+        "the record repeated for ever",
+    ),
+    (
+        "expected_drift_over_hs",
+        "drift",
+        POSITIVE,
+        "rms change of the largest soliton of a lone train over 20 wavelengths, over Hs",
+    ),
+    (
+        "expected_group_drift_over_hs",
+        "group_drift",
+        POSITIVE,
+        "the same of the largest group cut out of it",
+    ),
+    ("remarks", "remarks", _list(TEXT), "how far all of this holds"),
+)
+
 PROGRAM = (
     "program",
     "program_version",
@@ -364,14 +432,30 @@ def error_document(
 
 
 def check_document(
-    record: Record, quality: QualityReport, sea_state: SeaState | None, *, program_version: str
+    record: Record,
+    quality: QualityReport,
+    sea_state: SeaState | None,
+    scattering=None,
+    *,
+    program_version: str,
 ) -> dict[str, Any]:
-    """Quality and sea state of a record as a document of schema ``trikymia.check/1``."""
+    """Quality and sea state of a record as a document of schema ``trikymia.check/1``.
+
+    Parameters
+    ----------
+    record : Record
+    quality : QualityReport
+    sea_state : SeaState or None
+    scattering : ScatteringSpectrum or None
+        Null in the document where it was not asked for or could not be given.
+    program_version : str
+    """
     return {
         "schema": CHECK_SCHEMA,
         "record": RECORD.write(record, record.calendar),
         "quality": QUALITY.write(quality, record.calendar),
         "sea_state": _or_null(SEA_STATE).write(sea_state, record.calendar),
+        "scattering": _or_null(SCATTERING).write(scattering, record.calendar),
         "program": {"version": program_version},
     }
 

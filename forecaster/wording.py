@@ -21,10 +21,12 @@ from forecaster.datatypes import (
     SeaState,
 )
 from forecaster.serialize import utc_text
+from forecaster.waves.scattering_spectrum import LocatedEigenvalue, ScatteringSpectrum
 
 WIDTH = 92
 LONGEST_TABLE = 12  # intervals; all of them are in the JSON document
 LARGEST_GROUPS = 4
+LARGEST_EIGENVALUES = 6
 STANDS_OUT = 2.0  # times the base rate
 GROWS = 1.1  # amplification of a group from which it is said
 LOW = 0.1  # below it a reader may take the answer for a permission
@@ -143,8 +145,16 @@ def forecast_text(forecast: Forecast) -> str:
     return _joined(parts)
 
 
-def check_text(record: Record, quality: QualityReport, sea_state: SeaState | None) -> str:
-    """Quality and sea state of a record as plain ASCII text, ending with a line break."""
+def check_text(
+    record: Record,
+    quality: QualityReport,
+    sea_state: SeaState | None,
+    scattering: ScatteringSpectrum | None = None,
+) -> str:
+    """Quality and sea state of a record as plain ASCII text, ending with a line break.
+
+    The scattering spectrum follows where it is given.
+    """
     meaning = {
         "pass": "the record can be scored",
         "suspect": "the record can be scored, with the reservations below",
@@ -165,7 +175,66 @@ def check_text(record: Record, quality: QualityReport, sea_state: SeaState | Non
             test.detail, WIDTH, initial_indent=label, subsequent_indent=" " * len(label)
         ) or [label.rstrip()]
     parts.append(rows)
+    if scattering is not None:
+        parts += _scattering_parts(scattering, record)
     return _joined(parts)
+
+
+def _scattering_parts(spectrum: ScatteringSpectrum, record: Record) -> list[list[str]]:
+    """Paragraphs: what it is, the largest eigenvalues, groups and energy, how far it holds."""
+    found, periodic = spectrum.eigenvalues, spectrum.periodic
+    head = _wrapped(
+        f"SCATTERING SPECTRUM: {len(found)} eigenvalues. Each stands for a wave group that would "
+        "keep its height and speed (an envelope soliton), were it alone on the water."
+    )
+    table = [
+        "  height   over Hs   group speed, against the carrier      where in the record",
+        *(_eigenvalue_row(item, record) for item in found[:LARGEST_EIGENVALUES]),
+    ]
+    if len(found) > LARGEST_EIGENVALUES:
+        table.append(f"  and {len(found) - LARGEST_EIGENVALUES} smaller ones (all with --json)")
+    rest = max(0.0, 1 - spectrum.discrete_share - spectrum.continuous_share)
+    facts = [
+        ("Groups", _recorded_groups(spectrum, record)),
+        (
+            "Energy",
+            f"{_whole_percent(spectrum.discrete_share)} in these eigenvalues, "
+            f"{_whole_percent(spectrum.continuous_share)} in waves that disperse, "
+            f"{_whole_percent(rest)} in eigenvalues too small to be looked for",
+        ),
+        (
+            "Repeated",
+            f"the record taken as periodic has {periodic.unstable_modes} unstable modes, "
+            f"{periodic.open_bands} with an open band, the widest {periodic.widest_band:.2g} Hs",
+        ),
+    ]
+    remarks = ["How far this holds:", *_bullets(spectrum.remarks)]
+    return [head, table if found else [], _rows(facts), remarks]
+
+
+def _whole_percent(share: float) -> str:
+    return f"{100 * share:.0f} %"
+
+
+def _eigenvalue_row(item: LocatedEigenvalue, record: Record) -> str:
+    offset = (
+        f"{abs(100 * item.speed_offset):.1f} % {'faster' if item.speed_offset > 0 else 'slower'}"
+    )
+    return (
+        f"  {_metres(item.height):>6} {item.height_ratio:>9.2f}   {item.speed:>5.1f} m/s, "
+        f"{offset:<15}          {_clock(item.time, record)}"
+    )
+
+
+def _recorded_groups(spectrum: ScatteringSpectrum, record: Record) -> str:
+    groups = spectrum.groups
+    highest = sorted(groups, key=lambda group: -group.height)[:LARGEST_GROUPS]
+    told = "; ".join(
+        f"{_metres(group.height)} at {_clock(group.peak_time, record)} "
+        f"with {len(group.eigenvalues) or 'no'} eigenvalue{'s' * (len(group.eigenvalues) != 1)}"
+        for group in sorted(highest, key=lambda group: group.peak_time)
+    )
+    return f"{len(groups)}, the highest by their envelope: {told}" if told else "none"
 
 
 def verification_text(measured: dict) -> str:

@@ -214,6 +214,35 @@ def test_check_reads_a_file_and_answers_in_words_and_as_a_document(sea_file, cap
     assert document["sea_state"]["hs_m"] == pytest.approx(4.0, rel=0.03)
 
 
+def test_check_tells_and_draws_the_scattering_spectrum_when_asked(sea_file, capsys, tmp_path):
+    figure = tmp_path / "groups.png"
+    asked = ["check", str(sea_file), "--scattering"]
+    assert cli.main([*asked, "--figure", str(figure)]) == 0
+    out = capsys.readouterr().out
+    assert out.startswith("QUALITY: ") and "SCATTERING SPECTRUM: " in out
+    assert figure.read_bytes().startswith(b"\x89PNG")
+    assert cli.main([*asked, "--json"]) == 0
+    document = json.loads(capsys.readouterr().out)
+    assert document["scattering"]["eigenvalues"][0]["height_m"] > 1
+    assert cli.main(["check", str(sea_file), "--json"]) == 0
+    assert json.loads(capsys.readouterr().out)["scattering"] is None
+
+
+def test_a_figure_of_a_check_needs_something_to_draw(sea_file, capsys, tmp_path):
+    assert cli.main(["check", str(sea_file), "--figure", str(tmp_path / "a.png")]) == 2
+    assert "--scattering" in capsys.readouterr().err
+
+
+def test_a_failed_record_has_no_scattering_spectrum(tmp_path, capsys):
+    path = tmp_path / "flat.csv"
+    path.write_text("time_s,eta_m\n" + "".join(f"{i},0.5\n" for i in range(900)))
+    figure = tmp_path / "a.png"
+    asked = ["check", str(path), "--scattering", "--json", "--figure", str(figure)]
+    assert cli.main(asked) == 3
+    assert json.loads(capsys.readouterr().out)["scattering"] is None
+    assert not figure.exists()
+
+
 def test_check_of_a_dead_sensor_fails(tmp_path, capsys):
     path = tmp_path / "flat.csv"
     path.write_text("time_s,eta_m\n" + "".join(f"{i},0.5\n" for i in range(900)))
@@ -315,7 +344,8 @@ def test_help_starts_fast():
 
 def test_check_does_without_the_packages_of_training_and_plotting(sea_file):
     program = (
-        "import sys; from forecaster.cli import main; code = main(['check', sys.argv[1]]); "
+        "import sys; from forecaster.cli import main; "
+        "code = main(['check', sys.argv[1], '--scattering']); "
         "print(code, {'sklearn', 'matplotlib', 'joblib'} & set(sys.modules))"
     )
     assert run(str(sea_file), program=program).stdout.splitlines()[-1] == "0 set()"

@@ -13,7 +13,8 @@ from forecaster import plots
 from forecaster.datatypes import Target
 from forecaster.errors import InputError
 from forecaster.waves.heights import zero_crossing_waves
-from tests.hand_built import BAD, END, HS, forecast, record, unanswered
+from forecaster.waves.scattering_spectrum import scattering_spectrum
+from tests.hand_built import BAD, END, HS, SEA, forecast, record, unanswered
 
 
 @pytest.fixture(scope="module")
@@ -118,6 +119,36 @@ def test_images_are_of_their_format_and_equal_for_equal_figures(form, start):
     first, second = (plots.image_bytes(_small(), form) for _ in range(2))
     assert first.startswith(start)
     assert first == second
+
+
+@pytest.fixture(scope="module")
+def spectrum():
+    return scattering_spectrum(record(), SEA)
+
+
+def test_eigenvalues_are_drawn_by_height_and_group_speed(spectrum):
+    drawn = plots.scattering_figure(record(), SEA, spectrum)
+    above, below = drawn.axes
+    points = next(line for line in below.lines if line.get_marker() == "o")
+    np.testing.assert_allclose(
+        np.column_stack([points.get_xdata(), points.get_ydata()]),
+        [(100 * item.speed_offset, item.height / HS) for item in spectrum.eigenvalues],
+    )
+    numbers = {text.get_text(): text.get_position()[0] for text in above.texts}
+    assert len(numbers) == plots.NUMBERED
+    assert numbers["1"] == pytest.approx((spectrum.eigenvalues[0].time - END) / 60)
+    assert len(above.patches) == len(spectrum.groups)
+    told = " ".join(words(drawn))
+    for text in ("group speed", "Hs", "m/s", "minutes", "surface [m]", "faster", "20 wavelengths"):
+        assert text in told
+    assert f"{spectrum.eigenvalues[0].height:.1f} m" in told
+
+
+def test_a_record_without_eigenvalues_is_drawn(spectrum):
+    empty = replace(spectrum, eigenvalues=(), groups=())
+    drawn = plots.scattering_figure(record(source="a$b_{.csv"), SEA, empty)
+    assert "no group of waves would keep together" in words(drawn)
+    assert plots.image_bytes(drawn, "png").startswith(b"\x89PNG")
 
 
 def _small():

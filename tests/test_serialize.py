@@ -14,6 +14,7 @@ from hypothesis import strategies as st
 from forecaster import serialize
 from forecaster.datatypes import GroupForecast, IntervalForecast
 from forecaster.errors import NumericsError
+from forecaster.waves.scattering_spectrum import scattering_spectrum
 from tests.hand_built import BAD, GOOD, SEA, forecast, record, unanswered
 from tests.json_schema import problems
 
@@ -181,11 +182,32 @@ def test_the_same_forecast_gives_the_same_bytes_on_one_line():
 
 def test_check_document():
     document = serialize.check_document(record(), GOOD, SEA, program_version="0.1.0")
-    assert list(document) == ["schema", "record", "quality", "sea_state", "program"]
+    assert list(document) == ["schema", "record", "quality", "sea_state", "scattering", "program"]
+    assert document["scattering"] is None  # not asked for
     assert document["schema"] == "trikymia.check/1"
     assert document["quality"]["tests"][1]["name"] == "spike"
     assert document["sea_state"]["hs_m"] == 4.2
     assert serialize.check_document(record(), BAD, None, program_version="")["sea_state"] is None
+
+
+@pytest.mark.parametrize("calendar", [True, False])
+def test_check_document_holds_the_scattering_spectrum(calendar):
+    made = record(calendar=calendar)
+    spectrum = scattering_spectrum(made, SEA)
+    document = serialize.check_document(made, GOOD, SEA, spectrum, program_version="0")
+    written = json.loads(serialize.dumps(document))["scattering"]
+    assert problems(written, serialize.SCATTERING.schema) == []
+    first, found = written["eigenvalues"][0], spectrum.eigenvalues[0]
+    assert len(written["eigenvalues"]) == len(spectrum.eigenvalues) > 10
+    assert first["height_m"] == found.height
+    assert first["height_over_hs"] == pytest.approx(found.height / SEA.hs)
+    assert first["eigenvalue"] == {"re": found.value.real, "im": found.value.imag}
+    assert first["time"] == (serialize.utc_text(found.time) if calendar else round(found.time, 3))
+    assert [g["height_m"] for g in written["groups"]] == [g.height for g in spectrum.groups]
+    assert written["energy_discrete"] + written["energy_continuous"] <= 1 + 1e-6
+    assert written["carrier_rad_per_s"] == spectrum.envelope.omega0
+    assert written["periodic"]["unstable_modes"] == spectrum.periodic.unstable_modes
+    assert written["remarks"] == list(spectrum.remarks)
 
 
 def test_program_version_is_that_of_the_project():

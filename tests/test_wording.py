@@ -11,6 +11,7 @@ from hypothesis import strategies as st
 
 from forecaster import wording
 from forecaster.datatypes import Domain, QualityReport, QualityTest, Target
+from forecaster.waves.scattering_spectrum import scattering_spectrum
 from tests.hand_built import BAD, CAVEATS, END, GOOD, HS, SEA, forecast, record, unanswered
 
 FORBIDDEN = ("safe", "all clear", "no risk", "harmless", "no danger", "calm")
@@ -220,6 +221,33 @@ def test_check_text_puts_the_verdict_first_and_what_failed_before_what_passed():
     assert good.startswith("QUALITY: PASS")
     assert "Hs 4.2 m" in good and "not evaluated" in good
     assert good.isascii() and max(map(len, good.splitlines())) <= 100
+
+
+@pytest.mark.parametrize("calendar", [True, False])
+def test_check_text_tells_the_scattering_spectrum_when_it_is_given(calendar):
+    made = record(calendar=calendar)
+    spectrum = scattering_spectrum(made, SEA)
+    text = wording.check_text(made, GOOD, SEA, spectrum)
+    assert text.startswith(wording.check_text(made, GOOD, SEA).rstrip("\n"))
+    added = said(text[text.index("SCATTERING SPECTRUM") :])
+    assert f"{len(spectrum.eigenvalues)} eigenvalues" in added
+    largest = spectrum.eigenvalues[0]
+    assert f"{largest.height:.1f} m {largest.height_ratio:.2f} {largest.speed:.1f} m/s" in added
+    assert f"{len(spectrum.eigenvalues) - 6} smaller ones" in added
+    assert f"{len(spectrum.groups)}, the highest" in added
+    assert f"{100 * spectrum.discrete_share:.0f} % in these eigenvalues" in added
+    assert all(remark in added for remark in spectrum.remarks)
+    assert ("UTC" in added) is calendar
+    assert text.isascii() and max(map(len, text.splitlines())) <= 100
+    assert not any(word in text.lower() for word in FORBIDDEN)
+
+
+def test_check_text_of_a_record_without_eigenvalues():
+    made = record()
+    spectrum = replace(scattering_spectrum(made, SEA), eigenvalues=(), groups=())
+    text = wording.check_text(made, GOOD, SEA, spectrum)
+    assert "SCATTERING SPECTRUM: 0 eigenvalues" in text and "over Hs" not in text
+    assert re.search(r"^Groups +none$", text, re.M)
 
 
 def test_off_axis_caveat_says_both_numbers():

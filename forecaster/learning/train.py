@@ -9,6 +9,7 @@ import numpy as np
 from forecaster.datatypes import ModelIdentity
 from forecaster.errors import InputError, NumericsError
 from forecaster.learning.dataset import Dataset
+from forecaster.learning.events import EXTREME_HEIGHT
 from forecaster.learning.model import (
     CRITERIA,
     MARGINS,
@@ -206,15 +207,34 @@ def _fit_horizon(probability, reached, group) -> np.ndarray:
     return found.x
 
 
+def taught_on(recipes: list[str], dataset: Dataset, settings: TrainSettings) -> dict:
+    """What a model was fitted and calibrated on, in numbers for its card."""
+    counts = {"recipes": recipes, "rows": len(dataset.height)}
+    for label, seas in zip(("fitted", "calibrated"), split_seas(dataset, settings), strict=True):
+        inside = np.isin(dataset.sea, seas)
+        counts[f"{label}_seas"] = int(seas.size)
+        counts[f"{label}_records"] = int(
+            np.unique(np.stack([dataset.sea[inside], dataset.record[inside]]), axis=1).shape[1]
+        )
+        reached = inside & (dataset.height >= EXTREME_HEIGHT)
+        counts[f"{label}_intervals_with_extreme_wave"] = int(reached.sum())
+    return counts
+
+
 def fit_head(
     fitted: Dataset, held: Dataset, criterion: str, settings: TrainSettings,
-    *, names: tuple[str, ...], progress: Callable[[str], None] = lambda message: None,
+    *, names: tuple[str, ...], workers: int = 1,
+    progress: Callable[[str], None] = lambda message: None,
 ) -> Head:  # fmt: skip
     """One criterion: bags on `fitted`, calibration on `held`; no sea is in both."""
-    bags = []
-    for bag in range(settings.bags):
-        progress(f"{criterion}: bag {bag + 1} of {settings.bags}")
-        bags.append(_fit_bag(fitted, names, criterion, settings, bag))
+    import joblib
+
+    progress(f"{criterion}: {settings.bags} bags on {np.unique(fitted.sea).size} seas")
+    with joblib.parallel_config(backend="loky", inner_max_num_threads=1):
+        bags = joblib.Parallel(n_jobs=workers)(
+            joblib.delayed(_fit_bag)(fitted, names, criterion, settings, bag)
+            for bag in range(settings.bags)
+        )
     kept, group = horizon_groups(held)
     shown = held.rows(kept)
     ratios = CALIBRATION_RATIOS[criterion]
@@ -236,6 +256,7 @@ def fit(
     version: str,
     names: tuple[str, ...] | None = None,
     criteria: tuple[str, ...] = tuple(CRITERIA),
+    workers: int = 1,
     progress: Callable[[str], None] = lambda message: None,
 ) -> Model:
     """Fit and calibrate a model.
@@ -249,6 +270,8 @@ def fit(
     names : tuple of str or None
         Features to use; None for all of the dataset's (an ablation passes fewer).
     criteria : tuple of str
+    workers : int
+        Processes; the model is the same whatever their number.
     progress : callable
         Told what is being done.
     """
@@ -257,7 +280,9 @@ def fit(
     held = dataset.rows(np.isin(dataset.sea, calibrate_on))
     names = dataset.names if names is None else names
     heads = {
-        criterion: fit_head(fitted, held, criterion, settings, names=names, progress=progress)
+        criterion: fit_head(
+            fitted, held, criterion, settings, names=names, workers=workers, progress=progress
+        )
         for criterion in criteria
     }
     quantiles = np.quantile(fitted.features, (0.002, 0.998), axis=0)

@@ -235,7 +235,7 @@ def baseline_table(model, taught, dataset, ratio, *, generator) -> list[dict]:
 
 def ablation(
     taught: Dataset, dataset: Dataset, settings: TrainSettings, ratio: float, *, generator,
-    progress: Callable[[str], None] = lambda message: None,
+    workers: int = 1, progress: Callable[[str], None] = lambda message: None,
 ) -> dict:  # fmt: skip
     """What each kind of feature adds: one model per set, fitted alike, scored alike.
 
@@ -252,8 +252,9 @@ def ablation(
         progress(f"ablation: {label}")
         names = tuple(name for part in parts for name in FEATURE_SETS[part])
         model = fit(
-            taught, settings, name="ablation", version="0", names=names, criteria=("height",)
-        )
+            taught, settings, name="ablation", version="0", names=names, criteria=("height",),
+            workers=workers,
+        )  # fmt: skip
         p = model.intervals(shown.features, shown.names, [ratio]).probability[:, 0]
         scored[label] = np.clip(p, FLOOR, 1 - FLOOR)
         row = score_row(label, p, y, shown.sea, generator=generator)
@@ -289,7 +290,7 @@ def _gain(worse, better, y, sea, generator) -> dict:
 def verify(
     model: Model, dataset: Dataset, *, taught: Dataset | None = None,
     settings: TrainSettings | None = None, ratios: tuple[float, ...] = (1.6, 2.0), seed: int = 0,
-    progress: Callable[[str], None] = lambda message: None,
+    workers: int = 1, progress: Callable[[str], None] = lambda message: None,
 ) -> dict:  # fmt: skip
     """Everything that is measured of a model on seas never trained on, ready for JSON.
 
@@ -306,6 +307,8 @@ def verify(
         Height ratios.
     seed : int
         Of the resampling.
+    workers : int
+        Processes that the ablation may use.
     progress : callable
         Told what is being done.
     """
@@ -337,8 +340,9 @@ def verify(
         result["ratios"][f"{ratio:g}"] = entry
     if taught is not None and settings is not None:
         result["ablation"] = ablation(
-            taught, dataset, settings, ratios[0], generator=generator, progress=progress
-        )
+            taught, dataset, settings, ratios[0], generator=generator, workers=workers,
+            progress=progress,
+        )  # fmt: skip
     return result
 
 

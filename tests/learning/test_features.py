@@ -328,7 +328,7 @@ def test_features_know_no_scale(scale):
     tables = []
     for one, s in ((record, 1.0), (larger, scale)):
         tables.append(feature_table(scene_of(one, 5 * WAVELENGTH * s)))
-    np.testing.assert_allclose(tables[1], tables[0], rtol=2e-4, atol=2e-5)
+    np.testing.assert_allclose(tables[1], tables[0], rtol=1e-6, atol=1e-7)
 
 
 def test_the_clock_does_not_matter():
@@ -337,7 +337,7 @@ def test_the_clock_does_not_matter():
         feature_table(scene_of(replace(record, start=start), 5 * WAVELENGTH))
         for start in (0.0, 5000.0)
     ]
-    np.testing.assert_allclose(tables[1], tables[0], rtol=2e-3, atol=2e-4)
+    np.testing.assert_allclose(tables[1], tables[0], rtol=1e-4, atol=1e-5)
 
 
 def test_distances_asked_for_together_are_those_asked_for_alone():
