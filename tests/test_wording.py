@@ -279,18 +279,24 @@ def test_verification_tables_show_counts_scores_and_what_could_not_be_scored():
                 "horizons": rows[:1],
                 "baselines": [{"baseline": "climatology", "log_skill": 0.0, "roc": 0.5, **gain}],
             },
-            "2.2": {"intervals": [], "horizons": [], "not_scored": "no events"},
+            "2.2": {"intervals": [], "horizons": []},
         },
     }
+    sets = [
+        {"features": "all", "log_skill": [0.65, 0.6, 0.7], "roc": [0.98, 0.97, 0.99],
+         "log_skill_by_distance": {"5": 0.71}},
+    ]  # fmt: skip
+    measured["ablation"] = {"ratio": 1.6, "sets": sets, "gains": [{"from": "a", "to": "b", **gain}]}
     text = wording.verification_text(measured)
     pooled, single, steep = (
         next(line for line in text.splitlines() if line.startswith(f"  {name}"))
         for name in ("pooled", "5 wavelengths", "steep")
     )
-    for part in ("120", "54321", "250", "0.61 (0.55 to 0.66)", "0.98", "slope 0.97 (0.9 to 1)"):
+    for part in ("120", "54321", "250", "0.61 (0.55 to 0.66)", "0.98", "slope 0.97 (0.9 to 1.04)"):
         assert part in pooled
     assert "mean bias 0.001 (-0.002 to 0.003)" in single and "slope" not in single
     assert "too few events to score" in steep
-    assert "not scored further: no events" in text
+    assert "all                 0.65 (0.6 to 0.7)           0.980    0.710" in text
+    assert "gain in log score from 'a' to 'b': 0.02 (0.01 to 0.03)" in text
     assert "climatology  log skill 0.000, ROC 0.500; the model's gain 0.02 (0.01 to 0.03)" in text
     assert text.isascii()

@@ -155,9 +155,7 @@ def test_noisy_trees_fall_in_the_threshold(criterion, seed):
 def test_the_fitted_model_falls_in_the_threshold(criterion):
     rows = tiny_model.dataset()
     grid = np.linspace(*CRITERIA[criterion], 60)
-    answer = tiny_model.model().intervals(
-        rows.features[::5], rows.names, grid, criterion=criterion
-    )
+    answer = tiny_model.model().intervals(rows.features[::5], rows.names, grid, criterion=criterion)
     assert (np.diff(answer.probability, axis=1) <= 0).all()
     assert ((answer.probability >= 0) & (answer.probability <= 1)).all()
     assert (answer.error > 0).all()

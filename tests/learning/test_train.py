@@ -110,9 +110,7 @@ def test_one_threshold_is_enough(rows):
 
 
 def test_what_is_calibrated_on_is_what_a_forecast_shows():
-    rows = handmade(
-        coverage=[0.49, 0.5, 0.0, 1.0], distance_wavelengths=[5.0, 5.0, 0.0, 20.0]
-    )
+    rows = handmade(coverage=[0.49, 0.5, 0.0, 1.0], distance_wavelengths=[5.0, 5.0, 0.0, 20.0])
     assert calibration_rows(rows).tolist() == [False, True, True, True]
 
 
@@ -249,7 +247,7 @@ def test_a_fit_on_fewer_features_and_one_criterion(rows):
     assert tuple(model.heads) == ("height",)
     assert model.heads["height"].names == names
     assert said == [
-        "height: bag 1 of 2", "height: bag 2 of 2", "height: calibration on 3 seas",
+        "height: 2 bags on 9 seas", "height: calibration on 3 seas",
     ]  # fmt: skip
     small = model.intervals(np.ones((2, 5), np.float32), names, [1.0, 2.0]).probability
     assert small.shape == (2, 2)
