@@ -6,7 +6,7 @@
 A wave staff stands 1500 m upwave of the work site.  The seas, computed at a peak period of 10 s,
 are scaled (Froude) so that five gauge spacings are 1500 m.  The developing record is the one with
 the highest wave at the site in the minutes after the record ends, in units of Hs, whose own
-largest wave is below 1.7 Hs; the quiet one has the lowest.
+largest wave is below 1.9 Hs; the quiet one has the lowest.
 """
 
 import sys
@@ -46,7 +46,7 @@ def main(folder):
             ahead = float(interval_maxima(there, dt, edges)[0][0] / hs)
             own = zero_crossing_waves(record, dt).height.max() / hs
             found.append((ahead, own, member, elevation[gauge], n, dt))
-    developing = max((f for f in found if f[1] < 1.7), key=lambda f: f[0])
+    developing = max((f for f in found if f[1] < 1.9), key=lambda f: f[0])
     quiet = min(found, key=lambda f: f[0])
     for name, chosen in (("developing", developing), ("quiet", quiet)):
         ahead, own, member, series, n, dt = chosen

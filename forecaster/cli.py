@@ -538,10 +538,16 @@ def verify(seas, taught, name, ablation, record, workers, as_json):
 
 
 @trikymia.command()
-def models():
-    """List the models that are installed."""
-    from forecaster.learning.registry import installed_models
+@click.argument("name", required=False, metavar="[NAME]")
+def models(name):
+    """List the models that are installed, or print the card of one: what it is, what it can do."""
+    from forecaster.learning.registry import find_model, installed_models, read_verification
+    from forecaster.wording import card_text
 
+    if name is not None:
+        card = find_model(name)
+        click.echo(card_text(card.card, read_verification(card)), nl=False)
+        return None
     cards = installed_models()
     for card in cards:
         identity = card.identity
@@ -549,6 +555,7 @@ def models():
     if not cards:
         _say("no model is installed")
         return EXIT_CODES[errors.ModelError]
+    return None
 
 
 @trikymia.command()

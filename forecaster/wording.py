@@ -237,6 +237,19 @@ def _recorded_groups(spectrum: ScatteringSpectrum, record: Record) -> str:
     return f"{len(groups)}, the highest by their envelope: {told}" if told else "none"
 
 
+def card_text(card: dict, measured: dict) -> str:
+    """A model's card: what it is, what it was taught on, what was measured of it."""
+    lines = [f"{card['name']} {card['version']}: {card['summary']}"]
+    lines += [
+        f"  {key.replace('_', ' ')}: {', '.join(value) if isinstance(value, list) else value}"
+        for key, value in card.get("taught_on", {}).items()
+    ]
+    lines.append(f"  SHA-256 of model.npz: {card['files']['model.npz']}")
+    if not measured:
+        return _joined([lines, ["Nothing was measured of it yet: trikymia verify --record."]])
+    return _joined([lines]) + "\n" + verification_text(measured)
+
+
 def verification_text(measured: dict) -> str:
     """What `forecaster.learning.verify.verify` measured, as tables of plain ASCII text."""
     model = measured["model"]

@@ -16,6 +16,7 @@ import pytest
 from forecaster import cli, datatypes, errors, forecasting
 from forecaster.learning import ensemble, registry
 from forecaster.serialize import forecast_schema
+from tests import tiny_model
 from tests.hand_built import BAD, forecast, unanswered
 from tests.json_schema import problems
 
@@ -294,6 +295,13 @@ def test_models_are_listed_and_none_is_refused(monkeypatch, capsys):
     assert capsys.readouterr().out == "north/1.2  abababababab  a summary\n"
     monkeypatch.setattr(registry, "installed_models", lambda: ())
     assert cli.main(["models"]) == 4
+
+
+def test_the_card_of_a_model_is_printed(tmp_path, capsys):
+    folder = tiny_model.saved(tmp_path).folder
+    assert cli.main(["models", str(folder)]) == 0
+    assert "tiny 1: for tests" in capsys.readouterr().out
+    assert cli.main(["models", str(tmp_path / "absent")]) == 4
 
 
 def test_synth_hands_on_the_recipe_and_keeps_progress_off_the_output(monkeypatch, capsys, tmp_path):

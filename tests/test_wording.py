@@ -300,3 +300,16 @@ def test_verification_tables_show_counts_scores_and_what_could_not_be_scored():
     assert "gain in log score from 'a' to 'b': 0.02 (0.01 to 0.03)" in text
     assert "climatology  log skill 0.000, ROC 0.500; the model's gain 0.02 (0.01 to 0.03)" in text
     assert text.isascii()
+
+
+def test_a_card_tells_what_a_model_is_and_that_nothing_was_measured_yet():
+    card = {
+        "name": "north", "version": "2", "summary": "steep seas", "files": {"model.npz": "ab12"},
+        "taught_on": {"recipes": ["a.toml", "b.toml"], "fitted_seas": 300},
+    }  # fmt: skip
+    text = wording.card_text(card, {})
+    for part in ("north 2: steep seas", "recipes: a.toml, b.toml", "fitted seas: 300", "ab12"):
+        assert part in text
+    assert "Nothing was measured" in text
+    measured = {"model": {"name": "north", "version": "2"}, "rows": "rows of x", "ratios": {}}
+    assert "rows of x" in wording.card_text(card, measured)

@@ -228,6 +228,20 @@ def save_model(
     return _read_card(place)
 
 
+def read_verification(card: ModelCard) -> dict:
+    """What was measured of a model, as `record_verification` wrote it; empty if nothing was."""
+    path = card.folder / "verification.json"
+    try:
+        if path.stat().st_size > MAX_CARD_BYTES:
+            raise ModelIntegrityError(f"{path} is larger than {MAX_CARD_BYTES} bytes")
+        measured = json.loads(path.read_text(encoding="utf-8"))
+    except (OSError, ValueError) as error:
+        raise ModelIntegrityError(f"{path} cannot be read ({error})") from error
+    if not isinstance(measured, dict):
+        raise ModelIntegrityError(f"{path} holds no table of figures")
+    return measured
+
+
 def record_verification(place, verification: dict) -> None:
     """Write what a verification measured beside the model in the folder `place`."""
     text = json.dumps(verification, indent=1, allow_nan=False)

@@ -352,3 +352,20 @@ def test_a_half_written_model_is_not_there(models):
         load_model("tiny", models)
     tiny_model.saved(models)
     assert load_model("tiny", models).identity.name == "tiny"
+
+
+def test_the_shipped_model_is_the_default_and_was_verified():
+    card = registry.find_model()
+    assert card.identity.name == registry.DEFAULT_MODEL
+    model = registry.load_model()  # checks its SHA-256 and its stored answers
+    assert set(model.heads) == {"height", "crest"}
+    measured = registry.read_verification(card)
+    pooled = measured["ratios"]["1.6"]["intervals"][0]
+    assert pooled["label"] == "pooled" and pooled["seas"] >= 80 and pooled["events"] >= 200
+
+
+def test_a_damaged_verification_is_refused(tmp_path):
+    card = tiny_model.saved(tmp_path)
+    (card.folder / "verification.json").write_text("[1")
+    with pytest.raises(ModelIntegrityError, match="cannot be read"):
+        registry.read_verification(card)
