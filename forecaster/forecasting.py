@@ -169,8 +169,9 @@ def check(
         record = reading.cut(record, at, window)
     else:
         record = reading.read_record(record, at=at, window=window, **site, **reading_options)
-    record = remove_drift(record)
-    quality = check_quality(record)
+    as_read = record
+    record = remove_drift(as_read)
+    quality = check_quality(record, as_read=as_read)
     if quality.verdict == "fail":
         return Checked(record, quality, None)
     record = _measured_part(without_spikes(record))

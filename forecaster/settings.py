@@ -525,6 +525,12 @@ class TrainSettings(Settings):
         low=1000,
         high=10**8,
     )
+    uncovered_below: float = setting(
+        "coverage up to which an interval counts as not covered", default=0.05, low=0, high=1
+    )
+    uncovered_share: float = setting(
+        "share of the intervals not covered that a bag is fitted to", default=0.15, low=0, high=1
+    )
     thresholds_per_interval: int = setting(
         "thresholds drawn for each interval", default=3, low=1, high=50
     )

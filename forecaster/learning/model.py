@@ -29,6 +29,7 @@ MARGINS = {
         "reach_50": 0.5, "reach_10": 0.5, "reach_1": 0.5,
     },
 }  # fmt: skip
+LINE_COVERAGE, LINE_CENTRE = (0.5, 1.0), 0.8  # coverages told apart by the calibration line
 _FIELDS = ("feature", "threshold", "left", "right", "value")
 
 
@@ -108,10 +109,10 @@ class Head:
     names : tuple of str
         Features used.
     bags : tuple of Trees
-    slope, intercept : float
-        Calibration line on the mean log odds; slope above 0.
-    line_covariance : (2, 2) array
-        Of (intercept, slope), from resampled calibration seas.
+    line : (4,) array
+        Calibration of the mean log odds L: coefficients of `line_terms`.
+    line_covariance : (4, 4) array
+        Of these, seas being independent.
     horizon : (2,) array
         c0, c1 of log(-log(1 - P)) = c0 + c1 log(sum of -log(1 - p)) over the horizon's
         intervals (equal to independence at 0, 1).
@@ -119,8 +120,7 @@ class Head:
 
     names: tuple[str, ...]
     bags: tuple[Trees, ...]
-    slope: float
-    intercept: float
+    line: np.ndarray
     line_covariance: np.ndarray
     horizon: np.ndarray
 
@@ -131,6 +131,21 @@ class Probabilities:
 
     probability: np.ndarray
     error: np.ndarray
+
+
+def line_terms(log_odds, coverage) -> np.ndarray:
+    """(n, 4) terms 1, L, c, c L of the calibration line of log odds L (n,).
+
+    c is the coverage (n,) within `LINE_COVERAGE`, less 0.8: what a run is worth, and hence how
+    far its log odds may be trusted, depends on how much of the sea it has seen.
+    """
+    c = np.clip(np.asarray(coverage, float), *LINE_COVERAGE) - LINE_CENTRE
+    return np.stack([np.ones_like(log_odds), log_odds, c, c * log_odds], axis=-1)
+
+
+def line_slopes(line) -> np.ndarray:
+    """Slopes of a calibration line on the log odds at both ends of `LINE_COVERAGE`."""
+    return line[1] + line[3] * (np.array(LINE_COVERAGE) - LINE_CENTRE)
 
 
 def _expit(x):
@@ -187,7 +202,7 @@ class Model:
                 f"the model answers for {', '.join(self.heads)} only, not for {criterion!r}"
             )
         head = self.heads[criterion]
-        missing = [name for name in head.names if name not in names]
+        missing = [name for name in dict.fromkeys((*head.names, "coverage")) if name not in names]
         if missing:
             raise FeatureMismatchError(
                 f"the model needs the features {', '.join(missing)}, which were not computed"
@@ -199,11 +214,13 @@ class Model:
         bags = np.stack([trees.log_odds(columns) for trees in head.bags])
         mean = bags.mean(axis=0)
         spread = bags.std(axis=0, ddof=1)
-        c = head.line_covariance
-        line = c[0, 0] + 2 * c[0, 1] * mean + c[1, 1] * mean**2
-        error = np.sqrt((head.slope * spread) ** 2 + np.maximum(line, 0.0))
+        coverage = np.repeat(np.asarray(features)[:, names.index("coverage")], ratios.size)
+        terms = line_terms(mean, coverage)
+        variance = np.einsum("ni,ij,nj->n", terms, head.line_covariance, terms)
+        slope = line_terms(mean + 1, coverage) @ head.line - terms @ head.line
+        error = np.sqrt((slope * spread) ** 2 + np.maximum(variance, 0.0))
         shape = (len(table), ratios.size)
-        probability = _expit(head.intercept + head.slope * mean)
+        probability = _expit(terms @ head.line)
         return Probabilities(probability.reshape(shape), error.reshape(shape))
 
     def horizon(self, intervals: Probabilities, *, criterion="height") -> Probabilities:
@@ -241,7 +258,7 @@ def head_arrays(head: Head, prefix: str) -> dict[str, np.ndarray]:
     """A head as plain arrays for a model file, names beginning with `prefix`."""
     arrays = {
         f"{prefix}_names": np.array(head.names),
-        f"{prefix}_line": np.array([head.intercept, head.slope]),
+        f"{prefix}_line": head.line,
         f"{prefix}_line_covariance": head.line_covariance,
         f"{prefix}_horizon": head.horizon,
     }
@@ -269,8 +286,8 @@ def head_from_arrays(arrays: dict[str, np.ndarray], prefix: str) -> Head:
     """
     try:
         names = tuple(str(name) for name in arrays[f"{prefix}_names"])
-        intercept, slope = (float(x) for x in arrays[f"{prefix}_line"])
-        covariance = np.asarray(arrays[f"{prefix}_line_covariance"], float).reshape(2, 2)
+        line = np.asarray(arrays[f"{prefix}_line"], float).reshape(4)
+        covariance = np.asarray(arrays[f"{prefix}_line_covariance"], float).reshape(4, 4)
         horizon = np.asarray(arrays[f"{prefix}_horizon"], float).reshape(2)
         bags = []
         while f"{prefix}_{len(bags)}_shape" in arrays:
@@ -286,10 +303,11 @@ def head_from_arrays(arrays: dict[str, np.ndarray], prefix: str) -> Head:
     for trees in bags:
         if trees.feature.min(initial=0) < 0 or trees.feature.max(initial=0) >= columns:
             raise ModelIntegrityError(f"a tree of the model tests a column beyond {columns}")
-    numbers = [slope, intercept, *horizon, *covariance.ravel()]
-    if len(bags) < 2 or not (np.isfinite(numbers).all() and slope > 0 and horizon[1] > 0):
+    numbers = [*line, *horizon, *covariance.ravel()]
+    rising = np.isfinite(numbers).all() and line_slopes(line).min() > 0 and horizon[1] > 0
+    if len(bags) < 2 or not rising:
         raise ModelIntegrityError("the model file lacks bags, or its calibration is not usable")
-    return Head(names, tuple(bags), slope, intercept, covariance, horizon)
+    return Head(names, tuple(bags), line, covariance, horizon)
 
 
 def _trees_from_arrays(arrays, place):

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable
 
 import numpy as np
+from scipy.special import expit
 
 from forecaster.datatypes import ModelIdentity
 from forecaster.errors import InputError, NumericsError
@@ -16,17 +17,18 @@ from forecaster.learning.model import (
     Head,
     Model,
     Trees,
+    line_slopes,
+    line_terms,
     monotone_signs,
     threshold_columns,
 )
-from forecaster.learning.scores import fit_platt
 from forecaster.settings import TrainSettings
 
 CALIBRATION_RATIOS = {"height": (1.0, 1.2, 1.4, 1.6, 1.8, 2.0, 2.2), "crest": (0.7, 0.9, 1.1, 1.25)}
 HORIZON_COVERAGE = 0.5
 _BINS = 200
-_REPLICATES = 40
-_SPLIT, _BAG, _LINE = range(3)  # purposes of random numbers
+_NEWTON_STEPS = 40
+_SPLIT, _BAG = range(2)  # purposes of random numbers
 
 
 def split_seas(dataset: Dataset, settings: TrainSettings) -> tuple[np.ndarray, np.ndarray]:
@@ -89,7 +91,11 @@ def _fit_bag(dataset, names, criterion, settings, bag) -> Trees:
     generator = np.random.default_rng([settings.root_seed, _BAG, bag, len(criterion)])
     seas = np.unique(dataset.sea)
     chosen = generator.choice(seas, max(round(settings.bag_share * seas.size), 1), replace=False)
-    rows = np.flatnonzero(np.isin(dataset.sea, chosen))
+    wanted = np.isin(dataset.sea, chosen)
+    # where the run knows nothing all rows are alike: a share of them teaches the same
+    known = dataset.column("coverage") > settings.uncovered_below
+    wanted &= known | (generator.uniform(size=known.size) < settings.uncovered_share)
+    rows = np.flatnonzero(wanted)
     most = settings.rows_per_bag // settings.thresholds_per_interval
     if rows.size > most:
         rows = generator.choice(rows, most, replace=False)
@@ -151,23 +157,40 @@ def calibration_rows(dataset: Dataset) -> np.ndarray:
     )
 
 
-def _calibrated_line(log_odds, reached, sea, generator):
-    """Calibration line and its covariance from resampled seas."""
-    line = fit_platt(log_odds.ravel(), reached.ravel(), smoothing=False)
-    if not line.slope > 0:
+def _calibrated_line(log_odds, coverage, reached, sea):
+    """Calibration line of (rows, k) log odds and its covariance, seas being independent.
+
+    Maximum likelihood by Newton's method; covariance H^-1 (sum over seas of s s') H^-1, H the
+    information and s a sea's score (the sandwich of Huber 1967, Proc. 5th Berkeley Symp. 1, 221).
+    """
+    number = log_odds.shape[1]
+    terms = line_terms(log_odds.ravel(), np.repeat(coverage, number))
+    y = reached.ravel().astype(float)
+    line = np.array([0.0, 1.0, 0.0, 0.0])
+    for _ in range(_NEWTON_STEPS):
+        p = expit(terms @ line)
+        information = (terms * (p * (1 - p))[:, None]).T @ terms
+        step = np.linalg.lstsq(information, terms.T @ (y - p), rcond=None)[0]
+        line = line + step
+        if np.abs(step).max() < 1e-9:
+            break
+    else:
         raise NumericsError(
-            f"the calibration line falls with the trees' log odds (slope {line.slope:g}): they "
-            "have learnt nothing that holds on other seas",
+            f"the calibration line did not settle in {_NEWTON_STEPS} steps (last change "
+            f"{np.abs(step).max():.2g}); more seas with events are needed",
+            achieved=line,
+        )
+    if not line_slopes(line).min() > 0:
+        raise NumericsError(
+            f"the calibration line falls with the trees' log odds (slopes {line_slopes(line)}): "
+            "they have learnt nothing that holds on other seas",
             achieved=line,
         )
     seas, place = np.unique(sea, return_inverse=True)
-    lines = []
-    for _ in range(_REPLICATES):
-        weights = np.bincount(generator.integers(seas.size, size=seas.size), minlength=seas.size)
-        spread = np.broadcast_to(weights[place][:, None], log_odds.shape).ravel().astype(float)
-        resampled = fit_platt(log_odds.ravel(), reached.ravel(), smoothing=False, weights=spread)
-        lines.append((resampled.intercept, resampled.slope))
-    return line, np.cov(np.array(lines).T)
+    scores = np.zeros((seas.size, 4))
+    np.add.at(scores, np.repeat(place, number), terms * (y - p)[:, None])
+    inverse = np.linalg.pinv(information)
+    return line, inverse @ (scores.T @ scores) @ inverse
 
 
 def horizon_groups(dataset: Dataset) -> tuple[np.ndarray, np.ndarray]:
@@ -241,11 +264,12 @@ def fit_head(
     progress(f"{criterion}: calibration on {np.unique(held.sea).size} seas")
     log_odds = _raw_log_odds(bags, shown, names, criterion, ratios)
     reached = getattr(shown, criterion)[:, None] >= np.array(ratios)
-    generator = np.random.default_rng([settings.root_seed, _LINE, len(criterion)])
-    line, covariance = _calibrated_line(log_odds, reached, shown.sea, generator)
-    probability = 1 / (1 + np.exp(-(line.intercept + line.slope * log_odds)))
+    coverage = shown.column("coverage")
+    line, covariance = _calibrated_line(log_odds, coverage, reached, shown.sea)
+    terms = line_terms(log_odds, np.broadcast_to(coverage[:, None], log_odds.shape))
+    probability = expit(terms @ line)
     horizon = _fit_horizon(probability, reached, group)
-    return Head(names, tuple(bags), line.slope, line.intercept, covariance, horizon)
+    return Head(names, tuple(bags), line, covariance, horizon)
 
 
 def fit(

@@ -7,7 +7,7 @@ come from resampling whole seas.
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from itertools import pairwise
 
 import numpy as np
@@ -237,7 +237,7 @@ def ablation(
     taught: Dataset, dataset: Dataset, settings: TrainSettings, ratio: float, *, generator,
     workers: int = 1, progress: Callable[[str], None] = lambda message: None,
 ) -> dict:  # fmt: skip
-    """What each kind of feature adds: one model per set, fitted alike, scored alike.
+    """What each kind of feature adds: one model of two bags per set, fitted and scored alike.
 
     Returns
     -------
@@ -252,8 +252,8 @@ def ablation(
         progress(f"ablation: {label}")
         names = tuple(name for part in parts for name in FEATURE_SETS[part])
         model = fit(
-            taught, settings, name="ablation", version="0", names=names, criteria=("height",),
-            workers=workers,
+            taught, replace(settings, bags=2), name="ablation", version="0", names=names,
+            criteria=("height",), workers=workers,
         )  # fmt: skip
         p = model.intervals(shown.features, shown.names, [ratio]).probability[:, 0]
         scored[label] = np.clip(p, FLOOR, 1 - FLOOR)

@@ -38,7 +38,7 @@ _TIME_WORDS = frozenset(
 )
 _EPOCH_WORDS = frozenset(("epoch", "posix", "unix"))
 _ELEVATION_WORDS = frozenset(
-    "elevation eta zeta heave surface level displacement waterlevel z wave".split()
+    "elevation elev eta zeta heave surface level displacement waterlevel z wave".split()
 )
 
 
@@ -150,7 +150,7 @@ def read(
         For an issue time that cannot be read.
     """
     lines_of = _line_blocks(blocks, path)
-    first_line, lines = next(lines_of, (1, []))
+    first_line, lines, whole = next(lines_of, (1, [], True))
     layout = _layout(
         lines, path, unit=unit, time_column=time_column, elevation_column=elevation_column,
         sampling_hz=sampling_hz, fill_value=fill_value,
@@ -159,12 +159,12 @@ def read(
     rows = _RowReader(layout, path, limit, sampling_hz)
     kept = _LastWindow(window)
     start = layout.first_line - first_line
-    finished = rows.feed(first_line + start, lines[start:], kept)
+    finished = rows.feed(first_line + start, lines[start:], kept, whole=whole)
     while not finished:
-        first_line, lines = next(lines_of, (0, None))
+        first_line, lines, whole = next(lines_of, (0, None, True))
         if lines is None:
             break
-        finished = rows.feed(first_line, lines, kept)
+        finished = rows.feed(first_line, lines, kept, whole=whole)
     if not kept.parts:
         raise RecordFormatError(
             f"has no row up to the issue time {clock.written(limit, calendar=layout.calendar)}: "
@@ -191,12 +191,15 @@ def read(
         step=None if sampling_hz is None else 1.0 / sampling_hz,
         stamped=layout.time is not None,
         history=(*layout.history, said),
-        warnings=layout.warnings,
+        warnings=layout.warnings + (rows.warnings if at is None else ()),
     )
 
 
-def _line_blocks(blocks: Iterator[bytes], path: str) -> Iterator[tuple[int, list[bytes]]]:
-    """Lists of whole lines without line ends, each with the number of its first line."""
+def _line_blocks(blocks: Iterator[bytes], path: str) -> Iterator[tuple[int, list[bytes], bool]]:
+    """Lists of lines without line ends: number of the first, lines, whether the last had its end.
+
+    Only the very last line of a file may lack it.
+    """
     rest, number = b"", 1
     for block in blocks:
         rest += block
@@ -211,10 +214,10 @@ def _line_blocks(blocks: Iterator[bytes], path: str) -> Iterator[tuple[int, list
             continue
         lines = rest[: cut - 1].split(b"\n")
         rest = rest[cut:]
-        yield number, lines
+        yield number, lines, True
         number += len(lines)
     if rest.strip():
-        yield number, [rest]
+        yield number, [rest], False
 
 
 def _is_comment(line: bytes) -> bool:
@@ -358,6 +361,10 @@ def _layout(lines, path, *, unit, time_column, elevation_column, sampling_hz, fi
         calendar=calendar, unit=length, fills=tuple(fills), history=tuple(history),
         warnings=tuple(warnings),
     )  # fmt: skip
+
+
+def _is_length(unit: str) -> bool:
+    return not np.isnan(_scale_or_nan(unit))
 
 
 def _scale_or_nan(unit: str) -> float:
@@ -549,6 +556,10 @@ class _Columns:
         named = [i for i in free if _words(units.split_unit(self.names[i])[0]) & _ELEVATION_WORDS]
         if len(named) == 1:
             return named[0]
+        if len(free) > 1:  # "Temp [C]" is no elevation, whatever it is called
+            stated = [units.split_unit(self.names[i])[1] for i in free]
+            lengths = [i for i, unit in zip(free, stated, strict=True) if _is_length(unit)]
+            free = lengths if len(lengths) == 1 and all(stated) else free
         if len(free) == 1:
             return free[0]
         what = "several columns that could be the elevation" if free else "no column of elevation"
@@ -568,9 +579,14 @@ class _RowReader:
         self.first_time = np.nan
         self.last_time = -np.inf
         self.marks: dict[int, bytes] = {}  # decimal mark seen in each column
+        self.warnings: tuple[str, ...] = ()
 
-    def feed(self, first_line: int, lines: list[bytes], kept: _LastWindow) -> bool:
-        """Add the rows of `lines` up to the issue time to `kept`; true when it was passed."""
+    def feed(self, first_line: int, lines: list[bytes], kept: _LastWindow, *, whole: bool) -> bool:
+        """Add the rows of `lines` up to the issue time to `kept`; true when it was passed.
+
+        `whole`: the last line had its line end.  One without may still be being written, and is
+        left out if it cannot be read.
+        """
         layout = self.layout
         fields, numbers = [], []
         for number, line in enumerate(lines, first_line):
@@ -608,7 +624,10 @@ class _RowReader:
         trouble = bad_value or trouble
         if trouble is not None:
             row, message = trouble
-            raise RecordFormatError(message, path=self.path, line=numbers[row])
+            if whole or row < len(fields) - 1 or self.rows + row == 0:
+                raise RecordFormatError(message, path=self.path, line=numbers[row])
+            times, values = times[:row], values[:row]
+            self.warnings = (f"line {numbers[row]}, the last, is incomplete: left out",)
         self.rows += times.size
         kept.add(times, values, np.array(numbers[: times.size]))
         return finished
@@ -622,8 +641,8 @@ class _RowReader:
                 clock.written(t, calendar=self.layout.calendar) for t in (previous[row], times[row])
             ]
             raise RecordFormatError(
-                f"time runs backwards, from {written[0]} to {written[1]}: sort the rows, or cut "
-                "the file at this row",
+                f"time runs backwards, from {written[0]} to {written[1]}: sort the rows, or, if "
+                "the logger began anew, keep only those from this row on",
                 path=self.path,
                 line=numbers[row],
             )

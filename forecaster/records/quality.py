@@ -32,6 +32,7 @@ PERCENT_GOOD = 90.0  # IOOS manual 2019, recommended
 ACCELERATION = 0.5  # of g; IOOS manual 2019, recommended upper value
 SHORTEST, SHORT = 20.0, 32.0  # peak periods
 COARSEST = 4.0  # samples per peak period
+COARSEST_STEP = 10.0  # s; a swell of 40 s, longer than any, at 4 samples; no source
 SPIKES_SHARE = 0.02  # of samples, from which the sensor and not a sample is at fault
 STEEPEST, STEEP = 0.25, 0.18  # kp Hs / 2
 FLATTEST, FLAT = 2e-4, 1e-3
@@ -331,14 +332,16 @@ def spike(record: Record) -> QualityTest:
 
 
 def value_range(record: Record) -> QualityTest:
-    """Values that no sea reaches (IOOS test 11): beyond 40 m from the mean level.
+    """Values that no sea reaches (IOOS test 11): beyond 40 m from the median level.
 
-    Single spikes are left to the spike test; anything longer fails.
+    Single spikes are left to the spike test; anything longer fails.  The mean level would follow
+    the very values that are looked for.
     """
-    beyond = np.abs(np.nan_to_num(record.elevation)) > RANGE
-    measured = int(np.count_nonzero(~np.isnan(record.elevation)))
+    level = record.elevation - np.nanmedian(record.elevation)
+    beyond = np.abs(np.nan_to_num(level)) > RANGE
+    measured = int(np.count_nonzero(~np.isnan(level)))
     if not beyond.any():
-        largest = np.nanmax(np.abs(record.elevation))
+        largest = np.nanmax(np.abs(level))
         return QualityTest(
             "range", "pass", measured, 0, f"largest value {largest:.4g} m, limit {RANGE:g} m"
         )
@@ -346,7 +349,7 @@ def value_range(record: Record) -> QualityTest:
     flag = "suspect" if not (beyond & ~spike_samples(record)).any() else "fail"
     return QualityTest(
         "range", flag, measured, int(beyond.sum()),
-        f"{beyond.sum()} value(s) beyond {RANGE:g} m, the first {record.elevation[where]:.5g} m at "
+        f"{beyond.sum()} value(s) beyond {RANGE:g} m, the first {level[where]:.5g} m at "
         f"{_place(record, where)}: check the unit (unit), or declare the fill value (fill_value)",
     )  # fmt: skip
 
@@ -401,7 +404,7 @@ def acceleration(record: Record) -> QualityTest:
     flag = "fail" if share > 0.10 else "suspect" if share > 0.02 else "pass"
     return QualityTest(
         "acceleration", flag, second.size, beyond,
-        f"{100 * share:.2g} % of the accelerations exceed g/2"
+        f"{100 * share:.3g} % of the accelerations exceed g/2"
         + ("" if flag == "pass" else ": check the units of elevation and time, and the noise"),
     )  # fmt: skip
 
@@ -479,9 +482,12 @@ def record_length(record: Record) -> QualityTest:
     """
     tp = _scales(record).tp
     if not isfinite(tp):
+        coarse = record.dt > COARSEST_STEP
         return QualityTest(
             "record_length", "fail", record.n, 1,
-            f"{record.n} samples show no peak period: the record does not vary or is too short",
+            f"{record.n} samples show no peak period: "
+            + (f"no waves are sampled every {record.dt:g} s, check the unit of time" if coarse
+               else "the record does not vary or is too short"),
         )  # fmt: skip
     length = record.duration / tp
     flag = "fail" if length < SHORTEST else "suspect" if length < SHORT else "pass"
@@ -575,13 +581,22 @@ TESTS = {
 }
 
 
-def check_quality(record: Record, *, unit_hint: str | None = None) -> QualityReport:
+# Tests of the values as they were read: taking out the drift would spread a fill value over its
+# neighbours, and tilt a line that was flat.
+AS_READ = ("range", "flat_line")
+
+
+def check_quality(
+    record: Record, *, as_read: Record | None = None, unit_hint: str | None = None
+) -> QualityReport:
     """All quality tests of a record and the verdict.
 
     Parameters
     ----------
     record : Record
         Cut at the issue time, drift removed.
+    as_read : Record, optional
+        The same before the drift was removed, for the tests in `AS_READ`.
     unit_hint : str, optional
         Unit as which the elevation was read, for the remedies.
 
@@ -601,7 +616,8 @@ def check_quality(record: Record, *, unit_hint: str | None = None) -> QualityRep
         )
         rest = [_not_evaluated(name, "nothing measured") for name in TESTS if name != "gap"]
         return QualityReport("fail", (missing, *rest))
-    tests = tuple(test(record) for test in TESTS.values())
+    first = record if as_read is None else as_read
+    tests = tuple(test(first if name in AS_READ else record) for name, test in TESTS.items())
     if unit_hint is not None:
         tests = tuple(
             replace(test, detail=f"{test.detail} (it was read as {unit_hint})")

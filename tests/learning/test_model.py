@@ -50,11 +50,22 @@ def booster(criterion, seed, *, rounds=20):
     return fitted, columns
 
 
-def noisy_model(*, seeds=(1, 2), slope=0.8, intercept=-0.4, horizon=(0.0, 1.0)):
+LINE = np.array([-0.4, 0.8, 0.3, 0.2])
+LINE_COVARIANCE = np.array(
+    [
+        [0.02, 0.001, 0, 0],
+        [0.001, 0.004, 0, 0],
+        [0, 0, 0.03, 0.002],
+        [0, 0, 0.002, 0.01],
+    ]
+)
+
+
+def noisy_model(*, seeds=(1, 2), horizon=(0.0, 1.0)):
     heads = {
         criterion: Head(
-            NAMES, tuple(_flattened(booster(criterion, seed)[0]) for seed in seeds), slope,
-            intercept, np.array([[0.02, 0.001], [0.001, 0.004]]), np.array(horizon),
+            NAMES, tuple(_flattened(booster(criterion, seed)[0]) for seed in seeds), LINE,
+            LINE_COVARIANCE, np.array(horizon),
         )
         for criterion in CRITERIA
     }  # fmt: skip
@@ -168,9 +179,14 @@ def test_the_answer_is_the_calibrated_mean_of_the_bags(noisy):
     bags = np.array([booster("height", seed)[0].decision_function(columns) for seed in (1, 2)])
     answer = noisy.intervals(features, NAMES, [1.7])
     mean = bags.mean(axis=0)
-    np.testing.assert_allclose(answer.probability[:, 0], expit(-0.4 + 0.8 * mean), rtol=1e-9)
-    # by hand: variances of the bags' log odds and of the line (intercept, slope) at their mean
-    variance = 0.8**2 * (bags[0] - bags[1]) ** 2 / 2 + 0.02 + 2 * 0.001 * mean + 0.004 * mean**2
+    # by hand: a line whose intercept and slope change with the coverage, kept within 0.5 .. 1
+    c = np.clip(features[:, NAMES.index("coverage")].astype(float), 0.5, 1.0) - 0.8
+    slope = 0.8 + 0.2 * c
+    centre = -0.4 + 0.3 * c + slope * mean
+    np.testing.assert_allclose(answer.probability[:, 0], expit(centre), rtol=1e-9)
+    # by hand: variances of the bags' log odds and of the line at their mean
+    variance = slope**2 * (bags[0] - bags[1]) ** 2 / 2 + 0.02 + 2 * 0.001 * mean + 0.004 * mean**2
+    variance += 0.03 * c**2 + 2 * 0.002 * c**2 * mean + 0.01 * (c * mean) ** 2
     np.testing.assert_allclose(answer.error[:, 0] ** 2, variance, rtol=1e-9)
 
 
@@ -265,8 +281,7 @@ def test_arrays_give_the_head_back(noisy, arrays):
     columns = np.random.default_rng(0).uniform(0, 2, (50, 8)).astype(np.float32)
     for one, other in zip(head.bags, again.bags, strict=True):
         assert np.array_equal(one.log_odds(columns), other.log_odds(columns))
-    for name in ("slope", "intercept"):
-        assert getattr(again, name) == getattr(head, name)
+    assert np.array_equal(again.line, head.line)
     assert np.array_equal(again.line_covariance, head.line_covariance)
     assert np.array_equal(again.horizon, head.horizon)
 
@@ -310,6 +325,8 @@ def _without(name):
         _set("height_0_shape", 1, 0),
         _set("height_line", 1, 0.0),
         _set("height_line", 1, -0.5),
+        _set("height_line", 3, 10.0),  # the slope would be negative at low coverage
+        _set("height_line", 3, -10.0),
         _set("height_line", 0, np.nan),
         _set("height_line_covariance", (0, 0), np.nan),
         _set("height_horizon", 0, np.inf),

@@ -126,23 +126,22 @@ def test_one_horizon_a_record_and_distance():
 
 
 def test_the_calibration_line_is_recovered_with_its_error():
-    # by hand: outcomes drawn with log odds -0.5 + 1.4 x; sea by sea independent, so the resampled
-    # covariance is Fisher's, (X' W X)^-1
+    # by hand: outcomes drawn with a line that changes with the coverage c; rows are independent,
+    # so the covariance between seas is Fisher's, (X' W X)^-1
+    true = np.array([-0.5, 1.4, 0.6, -0.8])
     generator = np.random.default_rng(6)
-    x = generator.normal(-1, 1.5, (6000, 1))
-    y = generator.uniform(size=x.shape) < expit(-0.5 + 1.4 * x)
-    sea = np.arange(6000) // 20
-    line, covariance = train._calibrated_line(x, y, sea, np.random.default_rng(2))
-    p = expit(-0.5 + 1.4 * x[:, 0])
-    design = np.stack([np.ones(6000), x[:, 0]], axis=1)
+    x = generator.normal(-1, 1.5, (8000, 1))
+    coverage = generator.uniform(0.5, 1.0, 8000)
+    c = coverage - 0.8
+    design = np.stack([np.ones(8000), x[:, 0], c, c * x[:, 0]], axis=1)
+    p = expit(design @ true)
+    y = generator.uniform(size=8000) < p
+    line, covariance = train._calibrated_line(x, coverage, y[:, None], np.arange(8000) // 20)
     fisher = np.linalg.inv(design.T @ (design * (p * (1 - p))[:, None]))
-    for got, true, variance in zip(
-        (line.intercept, line.slope), (-0.5, 1.4), np.diag(fisher), strict=True
-    ):
-        assert abs(got - true) < 4 * np.sqrt(variance)
-    # 40 resamples: the relative error of a standard deviation is 1/sqrt(80)
+    assert (np.abs(line - true) < 4 * np.sqrt(np.diag(fisher))).all()
+    # 400 seas: the relative error of a standard deviation is about 1/sqrt(800)
     np.testing.assert_allclose(
-        np.sqrt(np.diag(covariance)), np.sqrt(np.diag(fisher)), rtol=4 / np.sqrt(80)
+        np.sqrt(np.diag(covariance)), np.sqrt(np.diag(fisher)), rtol=5 / np.sqrt(800)
     )
 
 
@@ -151,7 +150,7 @@ def test_trees_that_have_learnt_the_contrary_are_refused():
     x = generator.normal(size=(2000, 1))
     y = generator.uniform(size=x.shape) < expit(-2 * x)
     with pytest.raises(NumericsError, match="falls with the trees' log odds"):
-        train._calibrated_line(x, y, np.arange(2000) // 20, generator)
+        train._calibrated_line(x, np.full(2000, 0.9), y, np.arange(2000) // 20)
 
 
 def horizons(link, *, groups=4000, size=6, seed=3):
@@ -222,6 +221,7 @@ def test_the_model_is_calibrated_on_the_seas_held_back(rows, fitted):
     for criterion, ratios in CALIBRATION_RATIOS.items():
         p = fitted.intervals(shown.features, shown.names, ratios, criterion=criterion).probability
         y = getattr(shown, criterion)[:, None] >= np.array(ratios)
+        # (in the mean too, as the line has an intercept)
         line = fit_platt(np.log(p / (1 - p)).ravel(), y.ravel(), smoothing=False)
         assert line.intercept == pytest.approx(0, abs=1e-5)
         assert line.slope == pytest.approx(1, abs=1e-5)
