@@ -12,6 +12,7 @@ Usage: trikymia schema [OPTIONS]
 from __future__ import annotations
 
 import os
+import re
 import sys
 import time
 import traceback
@@ -37,6 +38,10 @@ EXIT_CODES = {
 }
 ANSWERED, FAILED, USAGE, NO_FORECAST, INTERRUPTED = 0, 1, 2, 3, 130
 _SHOW_TRACEBACK = "TRIKYMIA_TRACEBACK"
+# Names of the library in messages; in a path they are part of a longer word.
+_LIBRARY_OPTION = re.compile(
+    r"(?<![\w./-])(time_column|elevation_column|sampling_hz|fill_value)(?![\w./-])"
+)
 _EXTRAS = {"matplotlib": "plot", "sklearn": "train", "joblib": "train", "threadpoolctl": "train"}
 
 
@@ -81,7 +86,7 @@ def _exit_code(error: Exception) -> int:
 def _explained(error: Exception) -> str:
     """What to tell about an error of any kind."""
     if isinstance(error, errors.ForecasterError):
-        return str(error)
+        return _LIBRARY_OPTION.sub(lambda found: f"--{found[0].replace('_', '-')}", str(error))
     if isinstance(error, ModuleNotFoundError) and error.name in _EXTRAS:
         extra = _EXTRAS[error.name]
         return f"this needs {error.name}: install it with  pip install 'trikymia[{extra}]'"
@@ -135,8 +140,8 @@ def _options(*options):
     return add
 
 
-class _Number(click.FloatRange):
-    """A finite number within limits."""
+class _Finite:
+    """Refuses what is no finite number."""
 
     def convert(self, value, param, ctx):
         number = super().convert(value, param, ctx)
@@ -145,7 +150,15 @@ class _Number(click.FloatRange):
         return number
 
 
-_any = _Number()
+class _AnyNumber(_Finite, click.types.FloatParamType):
+    """A finite number."""
+
+
+class _Number(_Finite, click.FloatRange):
+    """A finite number within limits."""
+
+
+_any = _AnyNumber()
 _not_negative = _Number(min=0)
 _above_zero = _Number(min=0, min_open=True)
 _compass = _Number(min=0, max=360)
@@ -276,6 +289,8 @@ def _check_files(records, figure, report) -> None:
             f"--figure must end in {', '.join('.' + name for name in FORMATS)}; got {figure}"
         )
     for path in filter(None, (figure, report)):
+        if path.is_dir():
+            raise click.UsageError(f"cannot write {path}: it is a folder, name a file in it")
         if not path.absolute().parent.is_dir():
             raise click.UsageError(f"cannot write {path}: there is no folder {path.parent}")
 
@@ -540,7 +555,10 @@ def verify(seas, taught, name, ablation, record, workers, as_json):
 @trikymia.command()
 @click.argument("name", required=False, metavar="[NAME]")
 def models(name):
-    """List the models that are installed, or print the card of one: what it is, what it can do."""
+    """List the installed models, or print the card of one.
+
+    The card says what the model is for, what it was taught on and what was measured of it.
+    """
     from forecaster.learning.registry import find_model, installed_models, read_verification
     from forecaster.wording import card_text
 

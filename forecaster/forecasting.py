@@ -531,6 +531,12 @@ def _particular_caveats(checked, target, current, horizon) -> tuple[str, ...]:
             f"The threshold asked for is {target.threshold:.2g} Hs; the probability is that of "
             f"{CRITERIA[target.criterion][0]:g} Hs, a lower bound."
         )
+    late = target.valid_from - record.end
+    if late > 1:
+        caveats.append(
+            f"The current holds the waves back: the first {late:.0f} s after the record ends are "
+            "not answered for, the waves of that time had passed the sensor before."
+        )
     length = target.valid_to - target.valid_from
     if horizon is not None and length < horizon - 1e-6:
         caveats.append(f"The horizon is cut to {length:.0f} s, {MAX_INTERVALS} intervals.")

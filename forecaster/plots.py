@@ -21,7 +21,7 @@ from forecaster.datatypes import Forecast, Record, SeaState
 from forecaster.errors import InputError
 from forecaster.waves.heights import zero_crossing_waves
 from forecaster.waves.scattering_spectrum import DRIFT_DISTANCE, ScatteringSpectrum
-from forecaster.wording import one_in, percent
+from forecaster.wording import figure_notes, one_in, percent
 
 FORMATS = ("png", "svg", "pdf")
 # Told apart with every common kind of colour vision: Okabe & Ito 2008, Color Universal Design.
@@ -29,6 +29,7 @@ FORECAST, BASE, THRESHOLD, SEA = "#0072B2", "#222222", "#D55E00", "#4d4d4d"
 LARGEST_WAVES = 3
 NUMBERED = 8  # eigenvalues
 _RESOLUTION = 150  # dots per inch
+_LEAST_SURFACE = 1e-3  # m, of the axis of elevation
 _LOWEST = 1e-5  # of the axis of probabilities
 
 
@@ -42,10 +43,10 @@ def forecast_figure(forecast: Forecast) -> Figure:
         failed, the record alone.
     """
     if forecast.target is None:
-        figure = Figure(figsize=(11, 3.2), layout="constrained")
+        figure = Figure(figsize=(11, 3.8), layout="constrained")
         _draw_record(figure.subplots(), forecast)
     else:
-        figure = Figure(figsize=(11, 7.6), layout="constrained")
+        figure = Figure(figsize=(11, 8.2), layout="constrained")
         grid = figure.add_gridspec(3, 2, height_ratios=(1, 1.35, 0.3), width_ratios=(1.25, 1))
         _draw_record(figure.add_subplot(grid[0, :]), forecast)
         bars = figure.add_subplot(grid[1, 0])
@@ -54,7 +55,11 @@ def forecast_figure(forecast: Forecast) -> Figure:
         bars.tick_params(labelbottom=False)
         _draw_exceedance(figure.add_subplot(grid[1:, 1]), forecast)
     # a file name may hold "$", which would otherwise be read as mathematics
-    figure.suptitle(_title(forecast), parse_math=False, ha="left", x=0.01, fontsize=13)
+    head, foot = figure_notes(forecast)
+    figure.suptitle(
+        f"{_title(forecast)}\n{head}".strip(), parse_math=False, ha="left", x=0.01, fontsize=11
+    )
+    figure.supxlabel(foot, parse_math=False, ha="left", x=0.01, fontsize=6.5)
     return figure
 
 
@@ -222,6 +227,8 @@ def _draw_record(axes, forecast: Forecast) -> None:
             color=FORECAST, fontsize=9, fontweight="bold" if rank == 0 else "normal",
         )  # fmt: skip
     axes.margins(x=0.01, y=0.18)
+    if not np.nanmax(np.abs(record.elevation), initial=0.0) > _LEAST_SURFACE:
+        axes.set_ylim(-_LEAST_SURFACE, _LEAST_SURFACE)  # rounding is not to look like waves
     sea = "" if forecast.sea_state is None else (
         f": significant height {forecast.sea_state.hs:.1f} m, "
         f"peak period {forecast.sea_state.tp:.1f} s"

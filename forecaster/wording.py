@@ -24,6 +24,7 @@ from forecaster.serialize import utc_text
 from forecaster.waves.scattering_spectrum import LocatedEigenvalue, ScatteringSpectrum
 
 WIDTH = 92
+FIGURE_LINE, FIGURE_FOOT = 125, 215  # columns of the notes in a figure
 LONGEST_TABLE = 12  # intervals; all of them are in the JSON document
 LARGEST_GROUPS = 4
 LARGEST_EIGENVALUES = 6
@@ -136,13 +137,51 @@ def forecast_text(forecast: Forecast) -> str:
         facts.append(("Model", _model_line(forecast)))
     facts.append(("Issued", f"{_stamp(forecast.issued_at)} by trikymia {forecast.program_version}"))
     parts = [
-        _expiry(forecast),
+        _outdated(forecast),
         _rows(_answer(forecast) if forecast.answered else _no_forecast(forecast)),
         _interval_table(forecast),
         _rows(facts),
         [_CAVEATS_HEAD, *_bullets(forecast.caveats)],
     ]
     return _joined(parts)
+
+
+def figure_notes(forecast: Forecast) -> tuple[str, str]:
+    """What a figure must say besides the answer: below its title, and at its foot.
+
+    Parameters
+    ----------
+    forecast : Forecast
+
+    Returns
+    -------
+    head : str
+        Period, and what limits the answer: expired, suspect, edge, or why there is none.
+    foot : str
+        The caveats, and by what and when the figure was made.
+    """
+    lines = [" ".join(_outdated(forecast))]
+    if forecast.target is not None:
+        target = forecast.target
+        lines.append(f"Period {_between(target.valid_from, target.valid_to, forecast.record)}")
+    if not forecast.answered:
+        lines.append(dict(_no_forecast(forecast))["NO FORECAST"])
+    elif forecast.domain.status != "inside":
+        lines.append(_domain(forecast))
+    if forecast.quality.verdict == "suspect":
+        lines.append(f"SUSPECT record: {_flagged(forecast.quality, 'suspect')}")
+    issued = f"Issued {_stamp(forecast.issued_at)} by trikymia {forecast.program_version}"
+    if forecast.model is not None:
+        issued += f", model {_model_line(forecast)}"
+    foot = " ".join(forecast.caveats)
+    head = [
+        row for line in lines
+        for row in textwrap.wrap(line, FIGURE_LINE, max_lines=2, placeholder=" ...")
+    ]  # fmt: skip
+    return (
+        _ascii("\n".join(head)),
+        _ascii("\n".join([*textwrap.wrap(foot, FIGURE_FOOT), f"{issued}."])),
+    )
 
 
 def check_text(
@@ -389,16 +428,29 @@ def _html_table(heads, rows) -> str:
 # --- the parts of the text ---
 
 
-def _expiry(forecast: Forecast) -> list[str]:
-    """What comes before everything else: the horizon is over."""
-    target = forecast.target
-    if not forecast.record.calendar or target is None or forecast.issued_at < target.valid_to:
+def _outdated(forecast: Forecast) -> list[str]:
+    """What comes before everything else: the period, or its likeliest part, is over."""
+    target, now = forecast.target, forecast.issued_at
+    if not forecast.record.calendar or target is None:
         return []
+    if now >= target.valid_to:
+        return _wrapped(
+            f"EXPIRED: the period that this answers for ended {_span(now - target.valid_to)} "
+            f"before it was issued ({_stamp(now)}). Use a newer record."
+        )
+    span = most_likely_span(forecast)
+    if not span or not _is_over(span[-1], forecast):
+        return []
+    left = max(item.probability for item in forecast.intervals if not _is_over(item, forecast))
     return _wrapped(
-        f"EXPIRED: the period that this answers for ended "
-        f"{_span(forecast.issued_at - target.valid_to)} before it was issued "
-        f"({_stamp(forecast.issued_at)}). Use a newer record."
+        f"PARTLY PAST: the likeliest part of the period was over "
+        f"{_span(now - span[-1].end)} before this was issued ({_stamp(now)}). Of the intervals "
+        f"left the likeliest has {percent(left)}. Use a newer record."
     )
+
+
+def _is_over(item: IntervalForecast, forecast: Forecast) -> bool:
+    return forecast.record.calendar and item.end <= forecast.issued_at
 
 
 def _answer(forecast: Forecast) -> list[tuple[str, str]]:
@@ -558,32 +610,38 @@ def _interval_table(forecast: Forecast) -> list[str]:
     if not intervals:
         return []
     ordered = sorted(intervals, key=lambda item: -item.probability)
-    shown = {id(item) for item in ordered[:LONGEST_TABLE]}
     marked = {id(item) for item in most_likely_span(forecast)}
+    if not marked:
+        ordered = intervals  # none stands out: the next ones tell more than a few like them
+    shown = {id(item) for item in ordered[:LONGEST_TABLE]}
+
+    def mark(item):
+        return "x" if _is_over(item, forecast) else "*" if id(item) in marked else " "
+
     rows = [
-        _interval_row(item, forecast.record, id(item) in marked)
-        for item in intervals
-        if id(item) in shown
+        _interval_row(item, forecast.record, mark(item)) for item in intervals if id(item) in shown
     ]
     lines = [*_TABLE_HEAD, *rows]
     rest = ordered[LONGEST_TABLE:]
     if rest:
+        largest = max(item.probability for item in rest)
         lines.append(
-            f"  and {len(rest)} more of at most {percent(rest[0].probability)} each "
-            "(all of them with --json)"
+            f"  and {len(rest)} more of at most {percent(largest)} each (all of them with --json)"
         )
+    if any(row.startswith("x") for row in rows):
+        lines.append("  x was over when this was issued")
     lines.append("  * stands out; waves known: share of the wave energy that the record holds")
     return lines
 
 
-def _interval_row(item: IntervalForecast, record: Record, marked: bool) -> str:
+def _interval_row(item: IntervalForecast, record: Record, mark: str) -> str:
     start, end = (_short_clock(seconds, record) for seconds in (item.start, item.end))
     base = "-" if item.base_rate is None else percent(item.base_rate)
     times = "-" if not item.base_rate else f"{_two_digits(_times_base(item))} x"
     median = "-" if item.median_height is None else _metres(item.median_height)
     probability = f"{percent(item.probability)}, {one_in(item.probability)}"
     return (
-        f"{'*' if marked else ' '} {start:>8} {end:>9} {item.lead / 60:>8.1f}   "
+        f"{mark} {start:>8} {end:>9} {item.lead / 60:>8.1f}   "
         f"{probability:<21} {base:>10} {times:>7} {100 * item.coverage:>4.0f} %  {median:>8}"
     )
 
@@ -674,11 +732,14 @@ def _groups_line(forecast: Forecast) -> str:
 
 def _reasons_line(forecast: Forecast) -> str:
     ordered = sorted(forecast.reasons, key=lambda reason: -abs(reason.effect))[:5]
-    return "; ".join(
+    told = "; ".join(
         f"{reason.feature} {'raises' if reason.effect > 0 else 'lowers'} the odds "
         f"{_two_digits(exp(min(abs(reason.effect), 20.0)))} times"
         for reason in ordered
     )
+    if any("run" in reason.feature.split() for reason in ordered):
+        told += ". The run: the recorded waves, computed onwards to target and period"
+    return told
 
 
 def _model_line(forecast: Forecast) -> str:

@@ -109,6 +109,7 @@ def test_exit_code_of_one_record(asked, capsys, record, code, form):
         ["score", "--figure", "a.bmp", "good.csv"],
         ["score", "--figure", "no/such/folder/a.png", "good.csv"],
         ["score", "--report", "a.html", "good.csv", "outside.csv"],
+        ["score", "--report", ".", "good.csv"],
         ["synth", "--shard", "3/2", "a.toml", "b"],
         ["synth", "no-such-recipe.toml", "b"],
     ],
@@ -256,6 +257,15 @@ def test_an_unreadable_file_is_named_with_line_and_remedy(tmp_path, capsys):
     assert "missing.csv: no such file" in capsys.readouterr().err
 
 
+def test_a_message_names_the_option_of_the_command(tmp_path, capsys):
+    path = tmp_path / "fill_value.csv"
+    path.write_text("1.0\n2.0\n3.0\n")
+    assert cli.main(["check", str(path)]) == 3
+    told = capsys.readouterr().err
+    assert "give the sampling rate (--sampling-hz)" in told
+    assert "fill_value.csv" in told  # a path stays what it is
+
+
 def test_sensors_offered_are_those_of_the_record():
     (option,) = [item for item in cli.score.params if item.name == "sensor"]
     assert tuple(option.type.choices) == datatypes.SENSORS
@@ -265,7 +275,7 @@ def test_sensors_offered_are_those_of_the_record():
 def test_every_command_explains_itself_and_every_option(name, capsys):
     assert cli.main([name, "--help"]) == 0
     out = capsys.readouterr().out
-    assert f"Usage: trikymia {name}" in out
+    assert f"Usage: trikymia {name}" in out and "None" not in out
     command = cli.trikymia.commands[name]
     options = [item for item in command.params if isinstance(item, click.Option)]
     assert [item.name for item in options if not item.help] == []

@@ -280,6 +280,8 @@ def test_a_current_shifts_arrivals(ask, sea):
         assert other.arrival - one.arrival == pytest.approx(later)
     # the waves are the same, only later
     assert against.probability == still.probability
+    assert any(f"the first {later:.0f} s after" in c for c in against.caveats)
+    assert not any("holds the waves back" in c for c in still.caveats)
 
 
 def test_a_following_current_leaves_nothing_before_the_issue_time(ask, sea):
@@ -495,6 +497,14 @@ def test_a_sea_too_steep_for_the_model_is_outside(ask, sea):
     assert forecast.base_rate > 0
 
 
+def test_waves_too_short_for_the_sampling_are_outside_and_no_fault_of_the_options(ask):
+    # exact: 3.9 samples per peak period, fewer than an envelope takes
+    record = tiny_model.sea_record(hs=1.0, tp=3.9, dt=1.0, n=1800, seed=3, sensor="fixed")
+    forecast = ask(record, distance=100.0)
+    assert forecast.quality.verdict != "fail" and not forecast.answered
+    assert any("samples per peak period" in reason for reason in forecast.domain.reasons)
+
+
 def test_unknown_spread_is_edge_and_answered(ask):
     forecast = ask(spread=None)
     assert forecast.domain.status == "edge"
@@ -613,8 +623,9 @@ def test_gaps_at_the_ends_are_cut_off_and_not_counted_as_measured(ask, sea):
 
 
 def test_a_crest_from_a_buoy_is_edge(ask):
-    assert ask(crest_ratio=1.25, sensor="buoy").domain.status == "edge"
-    crest = ask(crest_ratio=1.25)
+    downwave = {"distance": 500.0, "crest_ratio": 1.25}
+    assert ask(**downwave, sensor="buoy").domain.status == "edge"
+    crest = ask(**downwave)
     assert crest.domain.status == "inside"
     assert crest.target.criterion == "crest"
     assert crest.target.threshold_m == pytest.approx(1.25 * crest.sea_state.hs)

@@ -34,6 +34,21 @@ def test_title_says_the_answer(figure):
         assert part in title
 
 
+def test_a_figure_alone_says_what_limits_the_answer():
+    made = forecast(issued_after=7200.0, quality=replace(BAD, verdict="suspect"))
+    told = " ".join(" ".join(words(plots.forecast_figure(made))).split())
+    for part in ("EXPIRED", "EDGE, with reserve", "SUSPECT record", "Issued 2031-05-01 05:04:10"):
+        assert part in told
+    for caveat in made.caveats:
+        assert caveat in told
+
+
+def test_a_dead_sensor_shows_a_line_and_not_its_rounding():
+    flat = replace(record(), elevation=np.full(3600, 1e-17))
+    axes = plots.forecast_figure(replace(unanswered(quality=BAD), record=flat)).axes[0]
+    assert axes.get_ylim() == (-1e-3, 1e-3)
+
+
 def test_axes_are_named_in_words_and_units(figure):
     for axes in figure.axes:
         assert axes.get_ylabel()
@@ -99,7 +114,9 @@ def test_every_kind_of_answer_can_be_drawn(made):
 
 def test_no_forecast_is_said_and_only_the_base_rate_is_drawn():
     drawn = plots.forecast_figure(unanswered())
-    assert drawn.get_suptitle().endswith("no forecast")
+    title = drawn.get_suptitle()
+    assert title.splitlines()[0].endswith("no forecast")
+    assert "steepness 0.21 above 0.14" in title
     assert "no forecast: base rate only" in words(drawn)
     assert "forecast" not in {line.get_label() for line in drawn.axes[3].lines}
 

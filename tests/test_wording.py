@@ -104,6 +104,50 @@ def test_an_expired_forecast_says_so_before_all_else():
     assert "EXPIRED" not in wording.forecast_text(forecast(calendar=False, issued_after=1e6))
 
 
+def test_a_forecast_whose_likeliest_part_is_over_says_so_before_all_else():
+    # by hand: the intervals that stand out end 240 s after the record; the period after 400 s
+    assert not wording.forecast_text(forecast(issued_after=239.0)).startswith("PARTLY PAST")
+    text = wording.forecast_text(forecast(issued_after=250.0))
+    assert said(text).startswith(
+        "PARTLY PAST: the likeliest part of the period was over 10 s before"
+    )
+    assert "the likeliest has 0.12 %" in said(text)[:250]
+    assert not wording.forecast_text(forecast(calendar=False, issued_after=250.0)).startswith("PAR")
+
+
+def test_rows_of_the_table_that_are_over_are_marked():
+    text = wording.forecast_text(forecast(issued_after=130.0))
+    marks = re.findall(r"^([x* ]) +03:[01]", text, flags=re.M)
+    # by hand: intervals of 40 s: three are over after 130 s; the fifth and sixth stand out
+    assert marks == list("xxx **    ")
+    assert "x was over" in text
+    assert "x was over" not in wording.forecast_text(forecast(issued_after=30.0))
+
+
+def test_a_table_without_a_peak_shows_the_next_intervals():
+    base = forecast().intervals[0]
+    alike = tuple(
+        replace(base, start=END + 40 * j, end=END + 40 * j + 40, probability=0.001 + 1e-6 * j)
+        for j in range(45)
+    )
+    text = wording.forecast_text(forecast(intervals=alike, issued_after=1.0))
+    rows = re.findall(r"^  (\d\d:\d\d:\d\d)", text, flags=re.M)
+    assert rows[0] == "03:04:10" and len(rows) == wording.LONGEST_TABLE
+    assert "and 33 more of at most 0.10 % each" in text
+
+
+def test_the_reasons_say_what_the_run_is():
+    assert "The run: the recorded waves" in said(wording.forecast_text(forecast()))
+
+
+@pytest.mark.parametrize("name", ANSWERS)
+def test_notes_of_a_figure_hold_the_caveats_and_why_there_is_no_forecast(name):
+    head, foot = wording.figure_notes(ANSWERS[name])
+    assert all(caveat in said(foot) for caveat in CAVEATS)
+    assert ("190 samples jump" in head) == (ANSWERS[name].quality is BAD)
+    assert max(map(len, head.splitlines()), default=0) <= wording.FIGURE_LINE
+
+
 def test_age_of_the_record():
     assert "30 s before" in said(wording.forecast_text(forecast(issued_after=30.0)))
     late = said(wording.forecast_text(forecast(issued_after=-3 * 3600.0)))

@@ -9,18 +9,24 @@ from forecaster.learning.features import FEATURES
 
 SPREAD_INSIDE, SPREAD_EDGE = 5.0, 10.0  # deg: a long-crested run loses the sea beyond
 KPH_INSIDE, KPH_EDGE = 15.0, 5.0  # the model is taught in deep water
+LEAST_SAMPLES = 4.0  # per peak period: coarser, a record has no envelope
+SEEN = 0.5  # coverage from which an interval is forecast from its own waves
 TANK_SENSOR_WORDS = "a flume or basin record is long-crested when its spread is given as 0"
 _WORSE = {"inside": 0, "edge": 1, "outside": 2}
-# features whose taught range bounds the domain: how far beyond (as a share of the range) is edge
+# Features whose taught range bounds the domain: up to which share of the range beyond it a value
+# is still inside, and edge.  Width: wind seas with an f^-4 tail are wider than the taught ones,
+# whose tail falls as f^-5; their forecasts keep skill, but less, and tend to be too low: edge.
+# Noise: the white floor also holds the tail of a clean sea sampled at about 1 Hz.
 _BOUNDED = {
-    "steepness": 0.10,
-    "bandwidth": 0.25,
-    "peakedness": 0.25,
-    "noise_share": 0.50,
-    "distance_wavelengths": 0.02,
+    "steepness": (0.0, 0.10),
+    "bandwidth": (0.05, 0.50),
+    "peakedness": (0.0, 0.25),
+    "noise_share": (0.50, 1.50),
+    "distance_wavelengths": (0.0, 0.02),
 }
-_LOWER_BOUNDED = {"record_periods": 0.35, "samples_per_period": 0.30}
-BOUNDING = (*_BOUNDED, *_LOWER_BOUNDED)  # features that `assess` looks at
+_LOWER_BOUNDED = {"record_periods": (0.0, 0.35), "samples_per_period": (0.0, 0.30)}  # of the limit
+BOUNDING = (*_BOUNDED, *_LOWER_BOUNDED, "coverage")  # features that `assess` looks at
+_WORDS = {"noise_share": "sensor noise, or waves too short for the sampling,"}
 
 
 def assess(
@@ -52,7 +58,9 @@ def assess(
     findings = [
         _spread(sea.spread),
         _depth(sea.kph),
-        *(_range(name, features, names, ranges) for name in BOUNDING),
+        *(_range(name, features, names, ranges) for name in (*_BOUNDED, *_LOWER_BOUNDED)),
+        _sampling(np.asarray(features)[:, names.index("samples_per_period")]),
+        _seen(np.asarray(features)[:, names.index("coverage")]),
     ]
     if criterion == "crest" and sensor == "buoy":
         findings.append(
@@ -96,21 +104,44 @@ def _depth(kph):
     )
 
 
+def _sampling(samples_per_period):
+    value = float(samples_per_period.min())
+    if value >= LEAST_SAMPLES:
+        return "inside", ""
+    return "outside", (
+        f"{value:.3g} samples per peak period: at least {LEAST_SAMPLES:g} are needed to follow "
+        "the waves"
+    )
+
+
+def _seen(coverage):
+    """A period that the record hardly tells of is answered for by the taught seas as a whole."""
+    unseen = int(np.count_nonzero(coverage < SEEN))
+    if 2 * unseen <= coverage.size:
+        return "inside", ""
+    return "edge", (
+        f"less than half of the waves are known in {unseen} of {coverage.size} intervals: the "
+        "answer there is that of long-crested seas in general, which have several times more high "
+        "waves than the short-crested ones of the base rate, and it is not verified"
+    )
+
+
 def _range(name, features, names, ranges):
     values = np.asarray(features)[:, names.index(name)]
     low, high = ranges[name]
     value_low, value_high = float(values.min()), float(values.max())
-    slack = _BOUNDED.get(name, _LOWER_BOUNDED.get(name)) * (high - low)
     below, above = low - value_low, value_high - high
     if name in _LOWER_BOUNDED:
+        inside, edge = (share * low for share in _LOWER_BOUNDED[name])
         above = 0.0
-        slack = _LOWER_BOUNDED[name] * low
+    else:
+        inside, edge = (share * (high - low) for share in _BOUNDED[name])
     excess = max(below, above)
-    tolerance = 1e-6 * max(abs(low), abs(high))
-    if excess <= tolerance:
+    rounding = 1e-6 * max(abs(low), abs(high))
+    if excess <= inside + rounding:
         return "inside", ""
     value = value_low if below >= above else value_high
-    return ("edge" if excess <= slack else "outside"), (
-        f"{FEATURES[name].words} {value:.3g} ({FEATURES[name].unit}): the model is taught between "
-        f"{low:.3g} and {high:.3g}"
+    return ("edge" if excess <= edge + rounding else "outside"), (
+        f"{_WORDS.get(name, FEATURES[name].words)} {value:.3g} ({FEATURES[name].unit}): the model "
+        f"is taught between {low:.3g} and {high:.3g}"
     )

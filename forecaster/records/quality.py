@@ -19,6 +19,7 @@ extreme crest is 1.25 Hs and more.  It is replaced by a rule on shape, see `spik
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
+from functools import lru_cache
 from math import isfinite, sqrt
 
 import numpy as np
@@ -101,6 +102,7 @@ def peak_period(record: Record) -> float:
     return _scales(record).tp
 
 
+@lru_cache(maxsize=2)  # of one record, read and without drift; records are compared by identity
 def spike_samples(record: Record) -> np.ndarray:
     """Which samples are spikes: they leave their neighbours and come back within Tp/10.
 
@@ -145,6 +147,7 @@ def spike_samples(record: Record) -> np.ndarray:
     tp = scales.tp
     found = np.zeros(record.n, dtype=bool)
     if not isfinite(tp):
+        found.setflags(write=False)
         return found
     measured = ~np.isnan(record.elevation)
     place = np.arange(record.n)
@@ -161,6 +164,7 @@ def spike_samples(record: Record) -> np.ndarray:
             if not near[first : first + width].any():
                 found[first : first + width] = True
                 near[max(first - 2, 0) : first + width + 2] = True
+    found.setflags(write=False)
     return found
 
 

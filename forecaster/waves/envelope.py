@@ -113,11 +113,14 @@ class BoundWaves:
             ratio = float(group_ratio(k0 * depth))
             cg = omega0 / k0 * ratio
             self._sum_factor = (3 - t**2) / (2 * t**3)
-            kappa = np.abs(omega) / cg
-            safe = np.where(kappa > 0, kappa, 1.0)
-            long_wave = np.where(kappa > 0, np.tanh(safe * depth) / safe, depth)
-            response = 0.5 * GRAVITY * (2 * ratio - 0.5) / (GRAVITY * long_wave - cg**2)
-            self._difference = np.where((omega != 0) & (np.abs(omega) < omega0), -response, 0.0)
+            # the forced long wave, for differences well below the resonance near 2 omega0
+            slow = (omega != 0) & (np.abs(omega) < omega0)
+            kappa = np.abs(omega[slow]) / cg
+            long_wave = np.tanh(kappa * depth) / kappa
+            self._difference = np.zeros(n)
+            self._difference[slow] = (
+                -0.5 * GRAVITY * (2 * ratio - 0.5) / (GRAVITY * long_wave - cg**2)
+            )
         else:
             self._sum_factor = 1.0
 

@@ -241,3 +241,45 @@ def test_only_the_last_window_is_kept_and_said():
 def test_issue_time_before_the_first_row_is_refused():
     with pytest.raises(RecordFormatError, match="no row up to the issue time -1 s: its first row"):
         read(table("time_s,elevation_m"), at=-1)
+
+
+@pytest.mark.parametrize("cut", ["2.5", "2.5,1e", "2.5,", "2."])
+def test_a_last_line_still_being_written_is_left_out_and_said(cut):
+    whole = table("time_s,elevation_m")
+    samples = read(whole + cut)
+    if cut == "2.5,":  # as many fields as the others: a missing value
+        assert samples.times[-1] == 2.5 and np.isnan(samples.values[-1])
+        return
+    assert samples.times.tolist() == read(whole).times.tolist()
+    assert samples.warnings == (*read(whole).warnings, "line 7, the last, is incomplete: left out")
+    # with its line end it is wrong
+    with pytest.raises(RecordFormatError, match="line 7"):
+        read(whole + cut + "\n")
+
+
+def test_an_incomplete_line_past_the_issue_time_changes_nothing():
+    whole = table("time_s,elevation_m")
+    cut, plain = read(whole + "2.", at=2.0), read(whole, at=2.0)
+    assert (cut.warnings, cut.history) == (plain.warnings, plain.history)
+    assert cut.values.tolist() == plain.values.tolist()
+
+
+def test_the_only_row_cannot_be_left_out():
+    with pytest.raises(RecordFormatError):
+        read("time_s,elevation_m\n0.0,1e")
+
+
+def test_a_column_of_another_unit_is_no_elevation():
+    row = "{t},{v},7.5,1013"
+    samples = read(table("time [s],A [cm],Temp [C],P [hPa]", row=row))
+    assert samples.unit == "cm" and samples.values.tolist() == [0, 1, 2, 3, 4]
+    assert read(table("time [s],Elev,Temp", row="{t},{v},7.5")).values[-1] == 4
+    for heading in ("time [s],A [cm],B [cm],P [hPa]", "time [s],A [cm],B,P [hPa]"):
+        with pytest.raises(RecordFormatError, match="several columns"):
+            read(table(heading, row=row))
+
+
+def test_a_logger_that_began_anew_is_refused_with_the_remedy():
+    rows = "".join(f"{t},0.1\n" for t in (0.0, 0.5, 1.0, 0.0, 0.5))
+    with pytest.raises(RecordFormatError, match=r"line 5.*only those from this row on"):
+        read("time_s,elevation_m\n" + rows)

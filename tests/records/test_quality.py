@@ -184,6 +184,36 @@ def test_flat_lines():
     assert check_quality(Record(np.full(3600, 0.3), dt=0.5)).verdict == "fail"
 
 
+def test_a_stuck_sensor_is_found_although_the_drift_was_taken_out():
+    # exact: 60 samples of one value; the polynomial that the stuck part itself tilts hides them
+    x = sea(np.random.default_rng(12))
+    x[1000:1060] = 1.5 * x.std()
+    as_read = Record(x + 1e-3 * np.arange(x.size) * np.ones(x.size), dt=0.5)
+    as_read = as_read.step("stuck", elevation=np.where(
+        (np.arange(x.size) >= 1000) & (np.arange(x.size) < 1060), 3.0, as_read.elevation
+    ))  # fmt: skip
+    level = remove_drift(as_read)
+    assert {t.name: t.flag for t in check_quality(level).tests}["flat_line"] == "pass"
+    tests = check_quality(level, as_read=as_read).tests
+    assert {t.name: t.flag for t in tests}["flat_line"] == "fail"
+
+
+def test_a_fill_value_is_told_as_it_stands_in_the_file():
+    # by hand: six samples of -9999 pull the mean of 3600 down by 17 m, the median by nothing
+    x = sea(np.random.default_rng(13))
+    x[500:506] = -9999.0
+    as_read = Record(x - x.mean(), dt=0.5)
+    tests = check_quality(remove_drift(as_read), as_read=as_read).tests
+    (told,) = [t for t in tests if t.name == "range"]
+    assert told.flag == "fail"
+    assert told.detail.startswith("6 value(s) beyond 40 m, the first -9999 m at 250 s")
+
+
+def test_a_step_that_no_waves_are_sampled_with_names_the_unit_of_time():
+    assert "check the unit of time" in detail(Record([0.0, 1.0, 0.0, 2.0], dt=500.0),
+                                              "record_length")  # fmt: skip
+
+
 def test_wrong_units_fail_with_the_remedy():
     x = sea(np.random.default_rng(13))
     millimetres = Record(1000 * x, dt=0.5)
