@@ -521,6 +521,7 @@ def train(settings, seas, name, release, summary, folder, workers):
 
 @trikymia.command()
 @_seas("--seas", required=True, text="Seas to verify on, never trained on.")
+@_seas("--elsewhere", required=False, text="More seas, each scored in a table of its own.")
 @_seas("--taught", required=False, text="The seas it was trained on, to set simpler forecasts up.")
 @click.option("--model", "name", metavar="NAME", help="Model to verify. Default: the shipped one.")
 @click.option(
@@ -530,7 +531,7 @@ def train(settings, seas, name, release, summary, folder, workers):
 @click.option("--record", is_flag=True, help="Also write the figures beside the model.")
 @_workers
 @click.option("--json", "as_json", is_flag=True, help="Print all figures as a JSON document.")
-def verify(seas, taught, name, ablation, record, workers, as_json):
+def verify(seas, elsewhere, taught, name, ablation, record, workers, as_json):
     """Measure how good a model is on seas that it was not trained on."""
     from forecaster.learning.registry import find_model, load_model, record_verification
     from forecaster.learning.verify import verify
@@ -542,6 +543,9 @@ def verify(seas, taught, name, ablation, record, workers, as_json):
     measured = verify(
         load_model(name),
         _dataset(seas, workers, plain_records=None),
+        elsewhere={
+            Path(more[0]).stem: _dataset([more], workers, plain_records=0) for more in elsewhere
+        },
         taught=_dataset(taught, workers),
         settings=load_settings(folder / "settings.toml", TrainSettings) if ablation else None,
         workers=workers,

@@ -299,19 +299,22 @@ def verification_text(measured: dict) -> str:
         if "baselines" in entry:
             title = f"Largest wave >= {ratio} Hs, against simpler forecasts of the same intervals"
             parts.append([title, *_baseline_lines(entry["baselines"])])
-    if "ablation" in measured:
-        parts.append(_ablation_lines(measured["ablation"]))
+    for place, tables in measured.get("elsewhere", {}).items():
+        for ratio, rows in tables.items():
+            parts.append([f"{place}: largest wave >= {ratio} Hs, intervals", *_score_lines(rows)])
+    for place, table in measured.get("ablation", {}).items():
+        parts.append(_ablation_lines(place, table))
     return _joined(parts)
 
 
-def _ablation_lines(ablation: dict) -> list[str]:
+def _ablation_lines(place: str, ablation: dict) -> list[str]:
     """What each kind of feature adds: log skill of each set, pooled and by distance."""
     places = list(
         dict.fromkeys(p for row in ablation["sets"] for p in row["log_skill_by_distance"])
     )
     lines = [
-        f"Largest wave >= {ablation['ratio']} Hs, by features used: log skill pooled, ROC, and log "
-        "skill by distance [wavelengths]",
+        f"{place}: largest wave >= {ablation['ratio']} Hs, by features used:",
+        "  log skill pooled, ROC, and log skill by distance [wavelengths]",
         f"  {'':<20}{'pooled':<27}{'ROC':>6} " + "".join(f"{place:>8}" for place in places),
     ]
     for row in ablation["sets"]:

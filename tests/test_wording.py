@@ -330,7 +330,8 @@ def test_verification_tables_show_counts_scores_and_what_could_not_be_scored():
         {"features": "all", "log_skill": [0.65, 0.6, 0.7], "roc": [0.98, 0.97, 0.99],
          "log_skill_by_distance": {"5": 0.71}},
     ]  # fmt: skip
-    measured["ablation"] = {"ratio": 1.6, "sets": sets, "gains": [{"from": "a", "to": "b", **gain}]}
+    table = {"ratio": 1.6, "sets": sets, "gains": [{"from": "a", "to": "b", **gain}]}
+    measured |= {"ablation": {"here": table}, "elsewhere": {"noisy": {"2": rows[:1]}}}
     text = wording.verification_text(measured)
     pooled, single, steep = (
         next(line for line in text.splitlines() if line.startswith(f"  {name}"))
@@ -340,6 +341,8 @@ def test_verification_tables_show_counts_scores_and_what_could_not_be_scored():
         assert part in pooled
     assert "mean bias 0.001 (-0.002 to 0.003)" in single and "slope" not in single
     assert "too few events to score" in steep
+    assert "here: largest wave >= 1.6 Hs, by features used" in text
+    assert "noisy: largest wave >= 2 Hs, intervals" in text
     assert "all                 0.65 (0.6 to 0.7)           0.980    0.710" in text
     assert "gain in log score from 'a' to 'b': 0.02 (0.01 to 0.03)" in text
     assert "climatology  log skill 0.000, ROC 0.500; the model's gain 0.02 (0.01 to 0.03)" in text

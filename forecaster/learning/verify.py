@@ -234,20 +234,19 @@ def baseline_table(model, taught, dataset, ratio, *, generator) -> list[dict]:
 
 
 def ablation(
-    taught: Dataset, dataset: Dataset, settings: TrainSettings, ratio: float, *, generator,
-    workers: int = 1, progress: Callable[[str], None] = lambda message: None,
+    taught: Dataset, datasets: dict[str, Dataset], settings: TrainSettings, ratio: float, *,
+    generator, workers: int = 1, progress: Callable[[str], None] = lambda message: None,
 ) -> dict:  # fmt: skip
     """What each kind of feature adds: one model of two bags per set, fitted and scored alike.
 
     Returns
     -------
     dict
-        ``sets``: scores of each set of features, downwave and at the sensor itself; ``gains``:
-        gain in mean log score from one set to another, with its by-sea interval.
+        For each of `datasets`: ``sets``, scores of each set of features, pooled and by distance;
+        ``gains``, gain in mean log score from one set to another, with its by-sea interval.
     """
-    shown = forecast_rows(dataset)
-    y = shown.height >= ratio
-    sets, scored = [], {}
+    shown = {place: forecast_rows(dataset) for place, dataset in datasets.items()}
+    told = {place: {} for place in datasets}
     for label, parts in ABLATIONS.items():
         progress(f"ablation: {label}")
         names = tuple(name for part in parts for name in FEATURE_SETS[part])
@@ -255,8 +254,19 @@ def ablation(
             taught, replace(settings, bags=2), name="ablation", version="0", names=names,
             criteria=("height",), workers=workers,
         )  # fmt: skip
-        p = model.intervals(shown.features, shown.names, [ratio]).probability[:, 0]
-        scored[label] = np.clip(p, FLOOR, 1 - FLOOR)
+        for place, rows in shown.items():
+            p = model.intervals(rows.features, rows.names, [ratio]).probability[:, 0]
+            told[place][label] = np.clip(p, FLOOR, 1 - FLOOR)
+    return {
+        place: _compared_sets(told[place], rows, ratio, generator) for place, rows in shown.items()
+    }
+
+
+def _compared_sets(told, shown, ratio, generator) -> dict:
+    """Scores of the probabilities `told` by each set of features for the same rows."""
+    y = shown.height >= ratio
+    sets = []
+    for label, p in told.items():
         row = score_row(label, p, y, shown.sea, generator=generator)
         places = {f"{d:g}": shown.distance == d for d in np.unique(shown.distance)}
         sets.append(
@@ -265,7 +275,7 @@ def ablation(
                 "log_skill": row.scores["log skill"],
                 "roc": row.scores["ROC"],
                 "log_skill_by_distance": {
-                    place: float(log_skill(scored[label][mask], y[mask]))
+                    place: float(log_skill(p[mask], y[mask]))
                     for place, mask in places.items()
                     if 0 < y[mask].sum() < mask.sum()
                 },
@@ -273,7 +283,7 @@ def ablation(
         )
     pairs = (("BFI and statistics", "+ scattering"), ("+ forward run", "all"))
     gains = [
-        {"from": less, "to": more, **_gain(scored[less], scored[more], y, shown.sea, generator)}
+        {"from": less, "to": more, **_gain(told[less], told[more], y, shown.sea, generator)}
         for less, more in pairs
     ]
     return {"ratio": ratio, "sets": sets, "gains": gains}
@@ -288,7 +298,8 @@ def _gain(worse, better, y, sea, generator) -> dict:
 
 
 def verify(
-    model: Model, dataset: Dataset, *, taught: Dataset | None = None,
+    model: Model, dataset: Dataset, *, elsewhere: dict[str, Dataset] | None = None,
+    taught: Dataset | None = None,
     settings: TrainSettings | None = None, ratios: tuple[float, ...] = (1.6, 2.0), seed: int = 0,
     workers: int = 1, progress: Callable[[str], None] = lambda message: None,
 ) -> dict:  # fmt: skip
@@ -299,6 +310,8 @@ def verify(
     model : Model
     dataset : Dataset
         Of the verification recipe.
+    elsewhere : dict of str to Dataset or None
+        More seas, each scored in a table of its own.
     taught : Dataset or None
         The training seas: with them, baselines are calibrated and compared.
     settings : TrainSettings or None
@@ -338,10 +351,20 @@ def verify(
                     model, taught, dataset, ratio, generator=generator
                 )
         result["ratios"][f"{ratio:g}"] = entry
+    elsewhere = elsewhere or {}
+    result["elsewhere"] = {
+        place: {
+            f"{ratio:g}": [
+                _as_dict(row) for row in model_table(model, rows, ratio, generator=generator)
+            ]
+            for ratio in ratios
+        }
+        for place, rows in elsewhere.items()
+    }
     if taught is not None and settings is not None:
         result["ablation"] = ablation(
-            taught, dataset, settings, ratios[0], generator=generator, workers=workers,
-            progress=progress,
+            taught, {"the seas above": dataset, **elsewhere}, settings, ratios[0],
+            generator=generator, workers=workers, progress=progress,
         )  # fmt: skip
     return result
 

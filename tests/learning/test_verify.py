@@ -133,7 +133,12 @@ def test_without_the_plain_run_its_baseline_is_left_out(seas):
 
 
 def test_verify_is_ready_for_json_and_skips_what_has_no_events(seas):
-    measured = verify(tiny_model.model(), seas, taught=seas, ratios=(RATIO, 2.8))
+    measured = verify(
+        tiny_model.model(), seas, elsewhere={"again": seas}, taught=seas, ratios=(RATIO, 2.8)
+    )
+    # the same seas elsewhere: the same cases
+    again = measured["elsewhere"]["again"]["1.2"][0]
+    assert again["cases"] == measured["ratios"]["1.2"]["intervals"][0]["cases"]
     assert measured["ratios"]["1.2"]["baselines"]
     assert measured["ratios"]["1.2"]["intervals"][0]["events"] > 0
     rare = measured["ratios"]["2.8"]
@@ -142,7 +147,9 @@ def test_verify_is_ready_for_json_and_skips_what_has_no_events(seas):
 
 @pytest.mark.slow
 def test_an_ablation_fits_each_set_and_tells_gains(seas):
-    table = ablation(seas, seas, tiny_model.SETTINGS, RATIO, generator=np.random.default_rng(0))
+    table = ablation(
+        seas, {"here": seas}, tiny_model.SETTINGS, RATIO, generator=np.random.default_rng(0)
+    )["here"]
     assert [row["features"] for row in table["sets"]] == list(ABLATIONS)
     skill = {row["features"]: row["log_skill"][0] for row in table["sets"]}
     assert skill["+ forward run"] > skill["BFI and statistics"]
