@@ -20,7 +20,7 @@ export OPENBLAS_NUM_THREADS := 1
 .PHONY: forecast test test-all lint docs bench clean
 
 forecast: $(VENV)/.core
-	$(BIN)/trikymia score $(DEMO) --distance $(DISTANCE)
+	$(BIN)/trikymia score $(DEMO) --distance $(DISTANCE) --spread 4 --sensor fixed
 
 # Slow tests: every one is run by test-all; here one in four, chosen by name, always the same.
 test: $(VENV)/.test

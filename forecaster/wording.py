@@ -29,7 +29,6 @@ LONGEST_TABLE = 12  # intervals; all of them are in the JSON document
 LARGEST_GROUPS = 4
 LARGEST_EIGENVALUES = 6
 STANDS_OUT = 2.0  # times the base rate
-GROWS = 1.1  # amplification of a group from which it is said
 LOW = 0.1  # below it a reader may take the answer for a permission
 
 # Lowest probability for each word.  No word below says that nothing will happen.
@@ -721,15 +720,11 @@ def _groups_line(forecast: Forecast) -> str:
         return ""
     coming = [group for group in forecast.groups if group.arrival >= forecast.target.valid_from]
     largest = sorted(coming, key=lambda group: -group.height)[:LARGEST_GROUPS]
-    told = []
-    for group in sorted(largest, key=lambda group: group.arrival):
-        text = f"{_metres(group.height)} arriving {_clock(group.arrival, forecast.record)}"
-        if group.focus_distance is not None and (group.amplification or 1) >= GROWS:
-            text += (
-                f" (may grow {group.amplification:.2g} times, focus {group.focus_distance:.0f} m "
-                "from the sensor)"
-            )
-        told.append(text)
+    # focusing estimates are left to the document: in broad seas they foretell little
+    told = [
+        f"{_metres(group.height)} arriving {_clock(group.arrival, forecast.record)}"
+        for group in sorted(largest, key=lambda group: group.arrival)
+    ]
     return f"on the way, height of the envelope at the sensor: {'; '.join(told)}" if told else ""
 
 
