@@ -9,13 +9,13 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass, field
-from functools import cache
+from functools import cache, partial
 
 import numpy as np
 
 from forecaster.datatypes import Envelope, Record, SeaState, Spectrum, Waves
 from forecaster.learning.events import INTERVAL_PERIODS
-from forecaster.waves.envelope import FREE_BAND, elevation_of, free_envelope
+from forecaster.waves.envelope import FREE_BAND, covered, elevation_of, free_envelope
 from forecaster.waves.heights import zero_crossing_waves
 from forecaster.waves.linear import group_velocity
 from forecaster.waves.propagate import ForwardRun, phase_coherence
@@ -343,15 +343,17 @@ class Scene:
             used = (f > FREE_BAND[0]) & (f < FREE_BAND[1])
             density = ahead.spectrum.density[used]
             share = density / density.sum()
-            omega = 2 * np.pi * ahead.spectrum.frequency[used]
-            travel = self.distance / group_velocity(omega, sea.depth)
             inner = (np.arange(PLACES) + 0.5) / PLACES
             times = self.edges[:-1, None] + np.diff(self.edges)[:, None] * inner
-            left = times[..., None] - travel
-            inside = (left >= ahead.record.start) & (left <= ahead.record.end)
+            start, end = ahead.record.start, ahead.record.end
+            left_between = partial(
+                covered, times, self.distance, frequency=ahead.spectrum.frequency[used],
+                start=start, depth=sea.depth,
+            )  # fmt: skip
+            inside = left_between(end=end)
             coherent = phase_coherence(f[used] - 1, sea.kp * self.distance, sea.steepness) ** 2
-            continued = left <= ahead.record.end + CONTINUED_PERIODS * sea.tp
-            known = ((left >= ahead.record.start) & continued) @ (share * coherent)
+            continued = left_between(end=end + CONTINUED_PERIODS * sea.tp)
+            known = continued @ (share * coherent)
             self._memory["shares"] = times, inside @ share, known
         return self._memory["shares"]
 

@@ -150,7 +150,7 @@ def _raw_log_odds(bags, dataset, names, criterion, ratios):
     )
 
 
-def calibration_rows(dataset: Dataset) -> np.ndarray:
+def shown_rows(dataset: Dataset) -> np.ndarray:
     """Mask of rows that a forecast would show: covered, or at the sensor itself."""
     return (dataset.column("coverage") >= HORIZON_COVERAGE) | (
         dataset.column("distance_wavelengths") == 0
@@ -195,7 +195,7 @@ def _calibrated_line(log_odds, coverage, reached, sea):
 
 def horizon_groups(dataset: Dataset) -> tuple[np.ndarray, np.ndarray]:
     """(rows kept, number of the horizon each belongs to): one horizon a (record, distance)."""
-    kept = np.flatnonzero(calibration_rows(dataset))
+    kept = np.flatnonzero(shown_rows(dataset))
     key = np.stack(
         [
             dataset.sea[kept].astype(np.int64),

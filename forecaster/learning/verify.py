@@ -29,7 +29,7 @@ from forecaster.learning.scores import (
     reliability_curve,
     roc_area,
 )
-from forecaster.learning.train import HORIZON_COVERAGE, fit, horizon_groups
+from forecaster.learning.train import HORIZON_COVERAGE, fit, horizon_groups, shown_rows
 from forecaster.settings import TrainSettings
 from forecaster.waves.heights import (
     excess_kurtosis_from_bfi,
@@ -83,11 +83,9 @@ class Row:
     scores: dict[str, tuple[float, float, float]]
 
 
-def forecast_rows(dataset: Dataset, *, coverage: float = HORIZON_COVERAGE) -> Dataset:
+def forecast_rows(dataset: Dataset) -> Dataset:
     """The intervals a forecast would show: half measured, or at the sensor itself."""
-    return dataset.rows(
-        (dataset.column("coverage") >= coverage) | (dataset.column("distance_wavelengths") == 0)
-    )
+    return dataset.rows(shown_rows(dataset))
 
 
 def score_row(label: str, p, y, sea, *, generator, replicates=REPLICATES) -> Row:

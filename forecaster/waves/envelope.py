@@ -246,37 +246,32 @@ def elevation_of(envelope: Envelope, *, refine: int = 4) -> tuple[np.ndarray, fl
     return zeta.real + bound(zeta), dt
 
 
-def coverage(times, distance, *, frequency, density, start, end, depth=np.inf) -> np.ndarray:
-    """Share of the wave energy at a place and time that left the sensor inside the record.
+def covered(times, distance, *, frequency, start, end, depth=np.inf) -> np.ndarray:
+    """Which components of the waves at a place and time left the sensor inside the record.
 
     Parameters
     ----------
-    times : (m,) array [s]
+    times : (...) array [s]
         At the target.
     distance : float [m]
         Downwave of the sensor.
-    frequency, density : (f,) arrays [Hz], [m^2/Hz]
-        Recorded spectrum, on a uniform grid.
+    frequency : (f,) array [Hz]
+        Above 0.
     start, end : float [s]
         First and last time of the record at the sensor.
     depth : float [m]
 
     Returns
     -------
-    (m,) array, 0..1
+    (..., f) boolean array
         Energy travels at the group velocity of its frequency (Naaijen, Trulsen &
         Blondel-Couprie 2014, Int. Shipbuild. Progr. 61, 203).
 
     Examples
     --------
-    >>> import numpy as np
-    >>> f = np.array([0.08, 0.1, 0.12]); s = np.array([0.0, 1.0, 0.0])
-    >>> coverage(np.array([0.0, 200.0, 2000.0]), 780.66, frequency=f, density=s,
-    ...          start=0.0, end=600.0)
-    array([0., 1., 0.])
+    >>> covered([0.0, 200.0, 2000.0], 780.66, frequency=[0.1], start=0.0, end=600.0).ravel()
+    array([False,  True, False])
     """
-    used = (frequency > 0) & (density > 0)
-    frequency, density = np.asarray(frequency)[used], np.asarray(density)[used]
-    travel = distance / group_velocity(2 * np.pi * frequency, depth)
+    travel = distance / group_velocity(2 * np.pi * np.asarray(frequency), depth)
     left = np.asarray(times)[..., None] - travel
-    return ((left >= start) & (left <= end)) @ (density / density.sum())
+    return (left >= start) & (left <= end)

@@ -12,11 +12,11 @@ from forecaster.learning.model import CRITERIA, head_arrays
 from forecaster.learning.scores import fit_platt
 from forecaster.learning.train import (
     CALIBRATION_RATIOS,
-    calibration_rows,
     draw_thresholds,
     fit,
     fit_head,
     horizon_groups,
+    shown_rows,
     split_seas,
 )
 from tests import tiny_model
@@ -111,7 +111,7 @@ def test_one_threshold_is_enough(rows):
 
 def test_what_is_calibrated_on_is_what_a_forecast_shows():
     rows = handmade(coverage=[0.49, 0.5, 0.0, 1.0], distance_wavelengths=[5.0, 5.0, 0.0, 20.0])
-    assert calibration_rows(rows).tolist() == [False, True, True, True]
+    assert shown_rows(rows).tolist() == [False, True, True, True]
 
 
 def test_one_horizon_a_record_and_distance():
@@ -217,7 +217,7 @@ def test_bags_differ(fitted):
 def test_the_model_is_calibrated_on_the_seas_held_back(rows, fitted):
     # exact: the line maximises the likelihood, so a second line fitted to its answers is 0, 1
     held = rows.rows(np.isin(rows.sea, split_seas(rows, SETTINGS)[1]))
-    shown = held.rows(calibration_rows(held))
+    shown = held.rows(shown_rows(held))
     for criterion, ratios in CALIBRATION_RATIOS.items():
         p = fitted.intervals(shown.features, shown.names, ratios, criterion=criterion).probability
         y = getattr(shown, criterion)[:, None] >= np.array(ratios)
