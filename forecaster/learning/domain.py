@@ -53,7 +53,7 @@ def assess(
     Returns
     -------
     Domain
-        The worst of all findings, with a reason each.
+        The worst of all findings, with a reason for each, the worst first.
     """
     findings = [
         _spread(sea.spread),
@@ -71,8 +71,12 @@ def assess(
         findings.append(
             ("edge", "the threshold is above what the model was taught: an upper bound is given")
         )
-    status = max((status for status, _ in findings), key=_WORSE.get)
-    return Domain(status, tuple(reason for state, reason in findings if state != "inside"))
+    told = sorted(
+        (finding for finding in findings if finding[0] != "inside"),
+        key=lambda finding: -_WORSE[finding[0]],
+    )
+    status = told[0][0] if told else "inside"
+    return Domain(status, tuple(reason for _, reason in told))
 
 
 def _spread(spread):

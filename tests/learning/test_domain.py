@@ -190,3 +190,9 @@ def test_the_worst_finding_decides_and_all_are_told():
     domain = judged(spread=7.0, kph=3.0, steepness=0.125, beyond=True)
     assert domain.status == "outside"
     assert len(domain.reasons) == 4
+
+
+def test_the_worst_reason_is_told_first():
+    domain = judged(spread=None, kph=3.0)
+    assert domain.status == "outside"
+    assert "kp h = 3" in domain.reasons[0] and "spread unknown" in domain.reasons[1]
