@@ -125,8 +125,8 @@ def _seen(coverage):
         return "inside", ""
     return "edge", (
         f"less than half of the waves are known in {unseen} of {coverage.size} intervals: the "
-        "answer there is that of long-crested seas in general, which have several times more high "
-        "waves than the short-crested ones of the base rate, and it is not verified"
+        "answer there is that of the taught long-crested seas in general, which have several times "
+        "more high waves than the base rate says"
     )
 
 
