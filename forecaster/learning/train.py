@@ -314,4 +314,6 @@ def fit(
         feature: (float(low), float(high))
         for feature, low, high in zip(dataset.names, *quantiles, strict=True)
     }
+    # a distance in the record's own wavelengths scatters with its kp; what was taught does not
+    ranges["distance_wavelengths"] = (float(fitted.distance.min()), float(fitted.distance.max()))
     return Model(ModelIdentity(name, version, ""), heads, ranges)

@@ -59,6 +59,7 @@ FEATURE_SETS = {
         "full_height", "full_crest", "full_envelope", "linear_height", "linear_envelope",
         "fed_envelope", "reach_50", "reach_10", "reach_1",
     ),
+    "plain run": ("plain_height",),  # a baseline's, not in the feature table
 }  # fmt: skip
 ABLATIONS = {
     "BFI and statistics": ("statistics",),
@@ -66,6 +67,15 @@ ABLATIONS = {
     "+ forward run": ("statistics", "forward run"),
     "all": ("statistics", "scattering", "forward run"),
 }
+PLAIN_ABLATIONS = {  # beside a plain Dysthe run in place of the forward run
+    "+ Dysthe run": ("statistics", "plain run"),
+    "+ Dysthe, scattering": ("statistics", "plain run", "scattering"),
+}
+GAINS = (
+    ("BFI and statistics", "+ scattering"),
+    ("+ Dysthe run", "+ Dysthe, scattering"),
+    ("+ forward run", "all"),
+)
 
 
 @dataclass(frozen=True, slots=True)
@@ -245,19 +255,37 @@ def ablation(
     """
     shown = {place: forecast_rows(dataset) for place, dataset in datasets.items()}
     told = {place: {} for place in datasets}
-    for label, parts in ABLATIONS.items():
-        progress(f"ablation: {label}")
-        names = tuple(name for part in parts for name in FEATURE_SETS[part])
-        model = fit(
-            taught, replace(settings, bags=2), name="ablation", version="0", names=names,
-            criteria=("height",), workers=workers,
-        )  # fmt: skip
-        for place, rows in shown.items():
-            p = model.intervals(rows.features, rows.names, [ratio]).probability[:, 0]
-            told[place][label] = np.clip(p, FLOOR, 1 - FLOOR)
+    plain = {
+        place: _with_plain_run(rows)
+        for place, rows in shown.items()
+        if np.isfinite(rows.plain_run).all()
+    }
+    whole = (ABLATIONS, taught, shown)
+    beside_dysthe = (PLAIN_ABLATIONS, _with_plain_run(taught), plain)
+    for ablations, teach, asked in (whole, beside_dysthe) if plain else (whole,):
+        for label, parts in ablations.items():
+            progress(f"ablation: {label}")
+            names = tuple(name for part in parts for name in FEATURE_SETS[part])
+            model = fit(
+                teach, replace(settings, bags=2), name="ablation", version="0", names=names,
+                criteria=("height",), workers=workers,
+            )  # fmt: skip
+            for place, rows in asked.items():
+                p = model.intervals(rows.features, rows.names, [ratio]).probability[:, 0]
+                told[place][label] = np.clip(p, FLOOR, 1 - FLOOR)
     return {
         place: _compared_sets(told[place], rows, ratio, generator) for place, rows in shown.items()
     }
+
+
+def _with_plain_run(dataset: Dataset) -> Dataset:
+    """The rows for which the plain Dysthe run is known, with its height as one more feature."""
+    known = dataset.rows(np.isfinite(dataset.plain_run))
+    return replace(
+        known,
+        features=np.hstack([known.features, known.plain_run[:, None]]),
+        names=(*known.names, *FEATURE_SETS["plain run"]),
+    )
 
 
 def _compared_sets(told, shown, ratio, generator) -> dict:
@@ -279,10 +307,10 @@ def _compared_sets(told, shown, ratio, generator) -> dict:
                 },
             }
         )
-    pairs = (("BFI and statistics", "+ scattering"), ("+ forward run", "all"))
     gains = [
         {"from": less, "to": more, **_gain(told[less], told[more], y, shown.sea, generator)}
-        for less, more in pairs
+        for less, more in GAINS
+        if less in told
     ]
     return {"ratio": ratio, "sets": sets, "gains": gains}
 
