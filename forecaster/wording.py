@@ -314,13 +314,13 @@ def _ablation_lines(place: str, ablation: dict) -> list[str]:
     lines = [
         f"{place}: largest wave >= {ablation['ratio']} Hs, by features used:",
         "  log skill pooled, ROC, and log skill by distance [wavelengths]",
-        f"  {'':<20}{'pooled':<27}{'ROC':>6} " + "".join(f"{place:>8}" for place in places),
+        f"  {'':<22}{'pooled':<27}{'ROC':>6} " + "".join(f"{place:>8}" for place in places),
     ]
     for row in ablation["sets"]:
         skills = (row["log_skill_by_distance"].get(place) for place in places)
         cells = "".join(f"{'-' if skill is None else f'{skill:.3f}':>8}" for skill in skills)
         lines.append(
-            f"  {row['features']:<20}{_interval(row['log_skill']):<27}{row['roc'][0]:>6.3f} {cells}"
+            f"  {row['features']:<22}{_interval(row['log_skill']):<27}{row['roc'][0]:>6.3f} {cells}"
         )
     lines += [
         f"  gain in log score from {row['from']!r} to {row['to']!r}: "
