@@ -10,6 +10,7 @@ from __future__ import annotations
 import cProfile
 import pstats
 import time
+from functools import partial
 
 import numpy as np
 from scipy.integrate import solve_ivp
@@ -17,12 +18,15 @@ from scipy.linalg import eigvals
 from scipy.stats import spearmanr
 
 from forecaster.datatypes import Envelope
+from forecaster.learning.features import FLUX_WINDOWS, WINDOW_STEP_PERIODS
 from forecaster.waves import scattering
 from forecaster.waves.scattering import (
     discrete_spectrum,
     focusing,
+    periodic_spectrum,
     segment_groups,
     windowed_content,
+    windowed_energy,
 )
 
 PER_PERIOD = 8
@@ -83,7 +87,9 @@ def windows_against_dense():
     taper = np.sin(np.pi * (np.arange(n) + 0.5) / n) ** 2
     windows = [q[i : i + n] * taper for i in np.linspace(0, q.size - n, 30).astype(int)]
     slow, _ = best(lambda: dense(windows[0], dt), 5)
-    single, _ = best(lambda: discrete_spectrum(windows[0], dt, order=4), 20)
+    single = np.median(
+        [best(lambda w=window: discrete_spectrum(w, dt, order=4), 10)[0] for window in windows]
+    )
     levels = scattering._levels(np.array(windows), 4)
     batch, found = best(lambda: scattering._eigenvalues(levels, dt, 0.02), 10)
     errors = {"dense": [], "order 4": [], "order 6": []}
@@ -97,7 +103,7 @@ def windows_against_dense():
             errors[name].append(error(window, dt, value) / sixth.imag)
     print(f"128-sample windows of a sea (steepness 0.12), {len(errors['dense'])} with solitons")
     print(f"  dense matrix, one window      {slow * 1e3:9.2f} ms")
-    print(f"  one window, certified         {single * 1e3:9.2f} ms   {slow / single:7.0f} x faster")
+    print(f"  one at a time, certified      {single * 1e3:9.2f} ms   {slow / single:7.0f} x faster")
     print(
         f"  30 windows, certified, each   {batch / 30 * 1e3:9.2f} ms   "
         f"{slow / (batch / 30):7.0f} x faster"
@@ -108,37 +114,62 @@ def windows_against_dense():
 
 def whole_record():
     q, dt = sea(1, 180)
-    centres = np.linspace(0, q.size * dt, 30)
-    windows, content = best(lambda: windowed_content(q, dt, centres), 10)
+    period = 2 * np.pi
+    end = q.size * dt
+    groups = np.arange(0, end, WINDOW_STEP_PERIODS * period)
+    steps = {
+        "whole record": lambda: discrete_spectrum(q, dt, order=4),
+        f"{groups.size} windows of 12 periods": lambda: windowed_content(q, dt, groups),
+    }
+    for length, spacing in FLUX_WINDOWS.values():
+        centres = np.arange(0, end, spacing * period)
+        steps[f"energy by speed, {centres.size} windows of {length:g} periods"] = partial(
+            windowed_energy, q, dt, centres, half_width=np.pi * length
+        )
     print("30-minute record: 180 peak periods, 8 samples a period, steepness 0.10, certified")
-    total = windows
-    for order in (4, 6):
-        record, found = best(lambda order=order: discrete_spectrum(q, dt, order=order), 10)
-        milliseconds = f"{record * 1e3:7.1f} ms"
-        print(f"  whole record, order {order}         {milliseconds}, {found.size} eigenvalues")
-        total = total + record if order == 4 else total
-    milliseconds = f"{windows * 1e3:7.1f} ms"
-    print(f"  30 windows of 12 periods      {milliseconds}, {content.count.sum()} eigenvalues")
-    print(f"  whole record + windows, order 4 {total * 1e3:5.1f} ms (limit 100, aim 60)")
+    total = 0.0
+    for name, call in steps.items():
+        seconds, _ = best(call, 10)
+        total += seconds
+        print(f"  {name:46s}{seconds * 1e3:7.1f} ms")
+    print(f"  {'all of these':46s}{total * 1e3:7.1f} ms (limit 100)")
+    for name, call in {
+        "whole record, order 6": lambda: discrete_spectrum(q, dt),
+        "periodic spectrum": lambda: periodic_spectrum(q, dt, order=4),
+    }.items():
+        seconds, _ = best(call, 5)
+        print(f"  {name:46s}{seconds * 1e3:7.1f} ms")
     profile = cProfile.Profile()
     repeat = 10
     profile.enable()
     for _ in range(repeat):
-        windowed_content(q, dt, centres)
-        discrete_spectrum(q, dt, order=4)
+        for call in steps.values():
+            call()
     profile.disable()
     entries = pstats.Stats(profile).stats
     cumulative = {key[2]: value[3] for key, value in entries.items() if "scattering" in key[0]}
-    print("  where the time goes (profiled, both together):")
+    print("  where the time goes (profiled, all of these):")
     for name, words in (
         ("_transfer_polynomials", "transfer polynomials"),
         ("_contour_count", "certificate (argument principle)"),
         ("_guesses", "starting grid"),
         ("_polish", "polishing"),
+        ("_separated", "boxes cut for what the grid missed"),
         ("_with_clusters", "multiple zeros"),
         ("focusing", "chirp and focusing"),
     ):
-        print(f"    {words:34s}{cumulative.get(name, 0.0) / repeat * 1e3:7.1f} ms")
+        print(f"    {words:44s}{cumulative.get(name, 0.0) / repeat * 1e3:7.1f} ms")
+
+
+def regular_waves():
+    """The hardest records: all eigenvalues crowd below one point."""
+    print("regular waves, kA = 0.1: eigenvalues found, exact count, time")
+    height, dt = 0.1 / np.sqrt(2), 2 * np.pi / PER_PERIOD
+    for periods in (60, 120, 250):
+        q = np.full(periods * PER_PERIOD, height)
+        seconds, found = best(lambda q=q: discrete_spectrum(q, dt, order=4), 1)
+        exact = int(height * q.size * dt / np.pi + 0.5)
+        print(f"  {periods:4d} periods {found.size:6d} {exact:6d} {seconds * 1e3:9.1f} ms")
 
 
 def linear_cost():
@@ -199,5 +230,6 @@ def focusing_skill():
 if __name__ == "__main__":
     windows_against_dense()
     whole_record()
+    regular_waves()
     linear_cost()
     focusing_skill()

@@ -544,7 +544,7 @@ def verify(seas, elsewhere, taught, name, ablation, record, workers, as_json):
         load_model(name),
         _dataset(seas, workers, plain_records=None),
         elsewhere={
-            Path(more[0]).stem: _dataset([more], workers, plain_records=0) for more in elsewhere
+            Path(more[0]).stem: _dataset([more], workers, plain_records=None) for more in elsewhere
         },
         taught=_dataset(taught, workers),
         settings=load_settings(folder / "settings.toml", TrainSettings) if ablation else None,

@@ -308,17 +308,20 @@ def verification_text(measured: dict) -> str:
 
 def _ablation_lines(place: str, ablation: dict) -> list[str]:
     """What each kind of feature adds: log skill of each set, pooled and by distance."""
-    places = list(
-        dict.fromkeys(p for row in ablation["sets"] for p in row["log_skill_by_distance"])
-    )
+    parts = ("log_skill_by_distance", "log_skill_by_coverage")
+    columns = {
+        part: list(dict.fromkeys(p for row in ablation["sets"] for p in row[part]))
+        for part in parts
+    }
+    places = [place for part in parts for place in columns[part]]
     lines = [
         f"{place}: largest wave >= {ablation['ratio']} Hs, by features used:",
-        "  log skill pooled, ROC, and log skill by distance [wavelengths]",
-        f"  {'':<22}{'pooled':<27}{'ROC':>6} " + "".join(f"{place:>8}" for place in places),
+        "  log skill pooled, ROC, and log skill by distance [wavelengths] and by coverage",
+        f"  {'':<22}{'pooled':<27}{'ROC':>6} " + "".join(f"{place:>9}" for place in places),
     ]
     for row in ablation["sets"]:
-        skills = (row["log_skill_by_distance"].get(place) for place in places)
-        cells = "".join(f"{'-' if skill is None else f'{skill:.3f}':>8}" for skill in skills)
+        skills = (row[part].get(place) for part in parts for place in columns[part])
+        cells = "".join(f"{'-' if skill is None else f'{skill:.3f}':>9}" for skill in skills)
         lines.append(
             f"  {row['features']:<22}{_interval(row['log_skill']):<27}{row['roc'][0]:>6.3f} {cells}"
         )

@@ -328,7 +328,7 @@ def test_verification_tables_show_counts_scores_and_what_could_not_be_scored():
     }
     sets = [
         {"features": "all", "log_skill": [0.65, 0.6, 0.7], "roc": [0.98, 0.97, 0.99],
-         "log_skill_by_distance": {"5": 0.71}},
+         "log_skill_by_distance": {"5": 0.71}, "log_skill_by_coverage": {"0.5-0.8": 0.27}},
     ]  # fmt: skip
     table = {"ratio": 1.6, "sets": sets, "gains": [{"from": "a", "to": "b", **gain}]}
     measured |= {"ablation": {"here": table}, "elsewhere": {"noisy": {"2": rows[:1]}}}
@@ -342,6 +342,8 @@ def test_verification_tables_show_counts_scores_and_what_could_not_be_scored():
     assert "mean bias 0.001 (-0.002 to 0.003)" in single and "slope" not in single
     assert "too few events to score" in steep
     assert "here: largest wave >= 1.6 Hs, by features used" in text
+    ablated = next(line for line in text.splitlines() if line.startswith("  all "))
+    assert ablated.split()[-2:] == ["0.710", "0.270"]
     assert "noisy: largest wave >= 2 Hs, intervals" in text
     assert "all                   0.65 (0.6 to 0.7)           0.980    0.710" in text
     assert "gain in log score from 'a' to 'b': 0.02 (0.01 to 0.03)" in text

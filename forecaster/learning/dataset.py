@@ -19,18 +19,20 @@ from forecaster.datatypes import Record
 from forecaster.errors import InputError, NumericsError
 from forecaster.learning.ensemble import PEAK_PERIOD, generate, member_generator
 from forecaster.learning.events import INTERVAL_PERIODS, interval_edges, outcomes
-from forecaster.learning.features import FEATURES, Scene, feature_table, look_ahead
+from forecaster.learning.features import FEATURES, Scene, carried, feature_table, look_ahead
 from forecaster.records.read import bridge_gaps
 from forecaster.settings import SeaRecipe, settings_to_table
 from forecaster.storage import ShardFolder, sha256_of
-from forecaster.waves.envelope import elevation_of
-from forecaster.waves.heights import interval_maxima
-from forecaster.waves.propagate import ForwardRun
 
 VIEWS = 1  # purpose of the random numbers that draw views (see `member_generator`)
 NAMES = tuple(FEATURES)
+PLAIN_FEATURES = (  # computed of a plain Dysthe run too
+    "run_height", "run_crest", "run_envelope", "run_height_wide", "run_crest_wide",
+    "run_height_before", "run_height_after",
+)  # fmt: skip
+PLAIN_NAMES = tuple(name.replace("run_", "plain_", 1) for name in PLAIN_FEATURES)
 PLAIN_RECORDS = 2  # records of a taught sea for which the plain Dysthe run is computed too
-FEATURES_EDITION = 1  # raised when a feature's or a view's numbers change: rows are then rebuilt
+FEATURES_EDITION = 2  # raised when a feature's or a view's numbers change: rows are then rebuilt
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -48,8 +50,8 @@ class Dataset:
         Of the sea as drawn: to sort results by, never a feature.
     distance : (n,) float32 array
         In peak wavelengths of the sea as drawn: to sort results by, never a feature.
-    plain_run : (n,) float32 array
-        Largest height over Hs of a plain Dysthe run, a baseline; NaN where not asked for.
+    plain_run : (n, len(PLAIN_NAMES)) float32 array
+        `PLAIN_FEATURES` of a plain Dysthe run, a baseline; NaN where not asked for.
     names : tuple of str
         Columns of `features`.
     """
@@ -177,9 +179,8 @@ def member_rows(
         try:
             ahead = look_ahead(record, reached * spacing)
             edges = interval_edges(record.end, ahead.sea.tp, count)
-            plain = np.full((reached.size, count), np.nan)
-            if plain_records is None or number < plain_records:
-                plain = _plain_heights(ahead, edges)
+            compared = plain_records is None or number < plain_records
+            plain = carried(ahead, equation="dysthe") if compared else None
         except (InputError, NumericsError):
             continue  # too coarse for its own waves, or a run that fails: not scored either
         for index, step in enumerate(reached):
@@ -188,6 +189,9 @@ def member_rows(
             heights, crests = outcomes(truth, dt, edges)
             known = np.isfinite(heights)
             shape = int(known.sum())
+            plain_run = np.full((shape, len(PLAIN_NAMES)), np.nan, np.float32)
+            if plain is not None:
+                plain_run = feature_table(Scene(plain, index, edges), PLAIN_FEATURES)[known]
             parts.append(
                 Dataset(
                     features=feature_table(scene)[known],
@@ -197,7 +201,7 @@ def member_rows(
                     record=np.full(shape, number, np.int32),
                     true_steepness=np.full(shape, sea["steepness"], np.float32),
                     distance=np.full(shape, recipe.distances_wavelengths[index], np.float32),
-                    plain_run=plain[index, known].astype(np.float32),
+                    plain_run=plain_run,
                 )
             )
     return Dataset(
@@ -209,17 +213,8 @@ def _no_rows() -> Dataset:
     """A dataset of no rows: what a member gives none of whose records can be used."""
     arrays = {name: np.empty(0, np.float32) for name in _ARRAYS}
     arrays["features"] = np.empty((0, len(NAMES)), np.float32)
+    arrays["plain_run"] = np.empty((0, len(PLAIN_NAMES)), np.float32)
     return Dataset(**arrays | {name: np.empty(0, np.int32) for name in ("sea", "record")})
-
-
-def _plain_heights(ahead, edges):
-    """(distances, intervals) largest height over Hs of a plain Dysthe run."""
-    run = ForwardRun(ahead.envelope, equation="dysthe")
-    heights = np.empty((ahead.distances.size, edges.size - 1))
-    for index, there in enumerate(run.march(ahead.distances)):
-        elevation, dt = elevation_of(there)
-        heights[index], _ = interval_maxima(elevation, dt, edges - there.start)
-    return heights / ahead.sea.hs
 
 
 def rows_hash(recipe: SeaRecipe, plain_records: int | None) -> str:

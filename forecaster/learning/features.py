@@ -8,8 +8,9 @@ intervals; `FEATURES` names each number, its unit and its source.
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from functools import cache, partial
+from itertools import pairwise
 
 import numpy as np
 
@@ -21,10 +22,15 @@ from forecaster.waves.linear import group_velocity
 from forecaster.waves.propagate import ForwardRun, phase_coherence
 from forecaster.waves.scattering import (
     WindowedContent,
+    WindowedEnergy,
     discrete_spectrum,
+    eigenvalue_locations,
+    evolution_scale,
     scaled_envelope,
     windowed_content,
+    windowed_energy,
 )
+from forecaster.waves.scattering_spectrum import PeriodicModes, periodic_modes, soliton_unit
 from forecaster.waves.spectrum import estimate_spectrum, noise_floor, sea_state
 
 MARGIN_PERIODS = (14.0, 0.8)  # empty time around a run: constant, and per wavelength of distance
@@ -35,6 +41,11 @@ LEAST_UNKNOWN = 0.01  # share of the energy that no run knows
 REACH_LEVELS = np.arange(0.0, 3.4, 0.1)
 WINDOW_STEP_PERIODS = 2.5  # between the centres of scattering windows
 TIMING_PERIODS = 1.0  # by how much a forecast wave may miss its interval
+# Windows whose energy is followed downwave: short ones know when it left, long ones how fast it is
+FLUX_WINDOWS = {"short": (8.0, 1.0), "long": (14.0, 2.0)}  # length, from one to the next [Tp]
+FLUX_BIN_PERIODS = 0.5  # of the times of arrival
+FLUX_SMOOTHING_PERIODS = 0.75  # standard deviation
+FLUX_NEIGHBOUR_PERIODS = 3.0  # from the middle of an interval to what comes before and after
 
 
 @cache
@@ -79,20 +90,32 @@ class Content:
 
     Parameters
     ----------
+    envelope : Envelope
+        Of the free waves: the record and what continues it at either end.
     centres : (w,) array [s]
         Of the windows, on the record's clock.
     windows : WindowedContent
+    flux : dict of str to WindowedEnergy
+        For each length in `FLUX_WINDOWS`.
     eigenvalues : (m,) complex array
         Of the whole record.
+    locations : (m,) array [s]
+        Where they live, on the record's clock.
+    periodic : PeriodicModes
+        Of the record repeated for ever; widths in Hs.
     scale : float
         Root mean square of q over the record: eigenvalues are told in units of it.
     action : float
         Integral of |q|^2 over the record's scaled time.
     """
 
+    envelope: Envelope
     centres: np.ndarray
     windows: WindowedContent
+    flux: dict[str, WindowedEnergy]
     eigenvalues: np.ndarray
+    locations: np.ndarray
+    periodic: PeriodicModes
     scale: float
     action: float
 
@@ -152,7 +175,12 @@ def _track(envelope: Envelope) -> Track:
 def run_envelope(record: Record, sea: SeaState, reach: float) -> Envelope:
     """Free-wave envelope of a record with enough empty time for a run over `reach` metres."""
     wavelengths = reach * sea.kp / (2 * np.pi)
-    margin = (MARGIN_PERIODS[0] + MARGIN_PERIODS[1] * wavelengths) * sea.tp
+    return _free_envelope(
+        record, sea, (MARGIN_PERIODS[0] + MARGIN_PERIODS[1] * wavelengths) * sea.tp
+    )
+
+
+def _free_envelope(record: Record, sea: SeaState, margin: float) -> Envelope:
     return free_envelope(
         record.elevation,
         record.dt,
@@ -163,7 +191,7 @@ def run_envelope(record: Record, sea: SeaState, reach: float) -> Envelope:
     )
 
 
-def scattering_content(record: Record, envelope: Envelope) -> Content:
+def scattering_content(record: Record, sea: SeaState) -> Content:
     """Scattering spectrum of a record's envelope, by windows and as a whole.
 
     Raises
@@ -171,14 +199,33 @@ def scattering_content(record: Record, envelope: Envelope) -> Content:
     NumericsError
         If the eigenvalues found are not those that the argument principle counts.
     """
+    envelope = _free_envelope(record, sea, 0.0)
     q, step = scaled_envelope(envelope)
     period = 2 * np.pi / envelope.omega0
-    centres = np.arange(record.start, record.end + period, WINDOW_STEP_PERIODS * period)
-    windows = windowed_content(q, step, (centres - envelope.start) * envelope.omega0)
+
+    def places(spacing):
+        centres = np.arange(record.start, record.end + period, spacing * period)
+        return centres, (centres - envelope.start) * envelope.omega0
+
+    centres, at = places(WINDOW_STEP_PERIODS)
     inside = (envelope.times >= record.start) & (envelope.times <= record.end)
     square = np.abs(q[inside]) ** 2
     whole = discrete_spectrum(q, step, order=4)
-    return Content(centres, windows, whole, float(np.sqrt(square.mean())), square.sum() * step)
+    located = eigenvalue_locations(q, step, whole, order=4)
+    return Content(
+        envelope=envelope,
+        centres=centres,
+        windows=windowed_content(q, step, at),
+        flux={
+            name: windowed_energy(q, step, places(spacing)[1], half_width=np.pi * length)
+            for name, (length, spacing) in FLUX_WINDOWS.items()
+        },
+        eigenvalues=whole,
+        locations=envelope.start + located / envelope.omega0,
+        periodic=periodic_modes(q, step, unit=soliton_unit(envelope, sea) or 1.0, order=4),
+        scale=float(np.sqrt(square.mean())),
+        action=square.sum() * step,
+    )
 
 
 def first_look(record: Record, distances, *, spread: float | None = None) -> FirstLook:
@@ -229,8 +276,26 @@ def look_ahead(record: Record, distances, *, spread: float | None = None) -> Loo
             envelope.times,
             2 * np.abs(envelope.values),
         ),
-        content=scattering_content(record, envelope),
+        content=scattering_content(record, first.sea),
     )
+
+
+def carried(ahead: LookAhead, equation: str) -> LookAhead:
+    """The same look ahead with a run of another equation, undamped, as its expected wave.
+
+    Parameters
+    ----------
+    ahead : LookAhead
+    equation : str
+        One of `propagate.EQUATIONS`.
+
+    Raises
+    ------
+    NumericsError
+        If the run fails.
+    """
+    run = ForwardRun(ahead.envelope, equation=equation)
+    return replace(ahead, expected=tuple(map(_track, run.march(ahead.distances))))
 
 
 @dataclass(eq=False)
@@ -327,9 +392,82 @@ class Scene:
     def focus_nearness(self) -> np.ndarray:
         """(m,) distance over the feeding group's focusing distance, 0 if it does not focus."""
         focus = self.group_value("focus_distance")
-        here = self.distance * self.ahead.envelope.k0
+        here = self.distance / evolution_scale(self.ahead.content.envelope)
         ratio = here / np.where(focus > 0, focus, np.inf)
         return np.clip(ratio, 0, 4)
+
+    def arriving_waves(self, window: str) -> tuple[np.ndarray, np.ndarray]:
+        """Height of the waves that arrive if phases are left out.
+
+        Each window's energy moves at the speeds of its scattering spectrum, dispersive waves and
+        solitons alike (`scattering.windowed_energy`).
+
+        Parameters
+        ----------
+        window : str
+            Which of `FLUX_WINDOWS`.
+
+        Returns
+        -------
+        times : (t,) array [s]
+            At the target, on the record's clock, `FLUX_BIN_PERIODS` apart.
+        height : (t,) array [Hs]
+            Root mean square of the envelope height 2|A|; 1/sqrt(2) in the mean of the record.
+        """
+        key = "arriving " + window
+        if key not in self._memory:
+            content, tp = self.ahead.content, self.ahead.sea.tp
+            envelope, sent = content.envelope, content.flux[window]
+            late = sent.speed * (self.distance / evolution_scale(envelope))
+            arrival = (sent.centre[:, None] + late) / envelope.omega0
+            arrival += envelope.start + self.travel_time
+            width = FLUX_BIN_PERIODS * tp
+            reach = int(4 * FLUX_SMOOTHING_PERIODS / FLUX_BIN_PERIODS)
+            room = FLUX_NEIGHBOUR_PERIODS * tp + (reach + 1) * width
+            first = self.edges[0] - room
+            count = int((self.edges[-1] + room - first) / width)
+            index = ((arrival - first) // width).astype(int)
+            inside = (index >= 0) & (index < count)
+            rate = np.bincount(index[inside], weights=sent.energy[inside], minlength=count)
+            offset = np.arange(-reach, reach + 1) * FLUX_BIN_PERIODS / FLUX_SMOOTHING_PERIODS
+            kernel = np.exp(-0.5 * offset**2)
+            # overlapping windows, whose squared weight is 3/8 in the mean, count energy repeatedly
+            length, spacing = FLUX_WINDOWS[window]
+            overlap = 0.375 * length / spacing
+            mean = content.scale**2 * envelope.omega0 * width * overlap
+            flux = np.convolve(rate, kernel / kernel.sum(), "same") / mean
+            times = first + width * (np.arange(count) + 0.5)
+            self._memory[key] = times, np.sqrt(0.5 * flux)
+        return self._memory[key]
+
+    def arriving_height(self, window: str, *, later: float = 0.0) -> np.ndarray:
+        """(m,) `arriving_waves` in the middle of each interval, or `later` peak periods after."""
+        times, height = self.arriving_waves(window)
+        middle = 0.5 * (self.edges[:-1] + self.edges[1:])
+        return np.interp(middle + later * self.ahead.sea.tp, times, height)
+
+    def largest_arriving(self, window: str) -> np.ndarray:
+        """(m,) largest of `arriving_waves` in each interval."""
+        times, height = self.arriving_waves(window)
+        return np.array(
+            [height[a:b].max() for a, b in pairwise(np.searchsorted(times, self.edges))]
+        )
+
+    def arriving_soliton(self) -> np.ndarray:
+        """(m,) largest soliton [rms q] of the whole record that arrives by its own speed, or 0.
+
+        In the interval widened by `TIMING_PERIODS`.
+        """
+        content, envelope = self.ahead.content, self.ahead.content.envelope
+        slack = TIMING_PERIODS * self.ahead.sea.tp
+        late = -4 * content.eigenvalues.real * (self.distance / evolution_scale(envelope))
+        arrival = content.locations + self.travel_time + late / envelope.omega0
+        inside = (arrival >= self.edges[:-1, None] - slack) & (
+            arrival < self.edges[1:, None] + slack
+        )
+        return np.where(inside, content.eigenvalues.imag, 0.0).max(axis=1, initial=0.0) / (
+            content.scale
+        )
 
     def _shares(self):
         """Places in time and, at each, shares of the energy: covered, known in phase.
@@ -458,12 +596,23 @@ def _content(function):
     return lambda scene: function(scene.ahead.content)
 
 
+def _arriving(window, **options):
+    return lambda scene: scene.arriving_height(window, **options)
+
+
+def _largest_arriving(window):
+    return lambda scene: scene.largest_arriving(window)
+
+
 _SCATTERING = "Zakharov-Shabat spectrum of the feeding window (waves.scattering)"
 _WHOLE = "Zakharov-Shabat spectrum of the record (waves.scattering)"
 _PAIR = "forward run with pair dispersion (waves.propagate)"
 _RICE = "expected envelope and the Gaussian rest (Rice 1945)"
 _LINEAR = "linear forward run (waves.propagate)"
+_FLUX = "energy at the speeds of the scattering spectrum (waves.scattering)"
+_PERIODIC = "main spectrum of the record repeated for ever (waves.scattering_spectrum)"
 _WIDE = {"widen": TIMING_PERIODS}
+_BEFORE, _AFTER = {"later": -FLUX_NEIGHBOUR_PERIODS}, {"later": FLUX_NEIGHBOUR_PERIODS}
 
 FEATURES: dict[str, Feature] = {
     # the sea
@@ -592,6 +741,44 @@ FEATURES: dict[str, Feature] = {
     "record_soliton_share": Feature(
         _content(lambda c: 4 * c.eigenvalues.imag.sum() / c.action),
         "1", _WHOLE, "scattering spectrum of the record",
+    ),
+    "unstable_modes": Feature(
+        lambda scene: scene.ahead.content.periodic.unstable_modes
+        / (scene.ahead.record.duration / scene.ahead.sea.tp),
+        "1/Tp", _PERIODIC, "scattering spectrum of the record",
+    ),
+    "open_bands": Feature(
+        _content(lambda c: c.periodic.open_bands / max(c.periodic.unstable_modes, 1)),
+        "1", _PERIODIC, "scattering spectrum of the record",
+    ),
+    "widest_band": Feature(
+        _content(lambda c: c.periodic.widest_band),
+        "Hs", _PERIODIC, "scattering spectrum of the record",
+    ),
+    "arriving_soliton": Feature(
+        Scene.arriving_soliton, "rms q", _WHOLE, "wave energy on its way here"
+    ),
+    "arriving_short": Feature(
+        _arriving("short"), "Hs", _FLUX, "wave energy on its way here"
+    ),
+    "arriving_short_largest": Feature(
+        _largest_arriving("short"), "Hs", _FLUX, "wave energy on its way here"
+    ),
+    "arriving_short_before": Feature(
+        _arriving("short", **_BEFORE), "Hs", _FLUX, "wave energy on its way here"
+    ),
+    "arriving_short_after": Feature(
+        _arriving("short", **_AFTER), "Hs", _FLUX, "wave energy on its way here"
+    ),
+    "arriving_long": Feature(_arriving("long"), "Hs", _FLUX, "wave energy on its way here"),
+    "arriving_long_largest": Feature(
+        _largest_arriving("long"), "Hs", _FLUX, "wave energy on its way here"
+    ),
+    "arriving_long_before": Feature(
+        _arriving("long", **_BEFORE), "Hs", _FLUX, "wave energy on its way here"
+    ),
+    "arriving_long_after": Feature(
+        _arriving("long", **_AFTER), "Hs", _FLUX, "wave energy on its way here"
     ),
 }  # fmt: skip
 

@@ -22,7 +22,9 @@ CRITERIA = {"height": HEIGHT_RATIOS, "crest": CREST_RATIOS}
 MARGINS = {
     "height": {
         "run_height": 1.0, "run_height_wide": 1.0, "run_envelope": 1.0, "full_height": 1.0,
-        "linear_height": 1.0, "plain_height": 1.0, "reach_50": 1.0, "reach_10": 1.0, "reach_1": 1.0,
+        "linear_height": 1.0, "plain_height": 1.0, "plain_height_wide": 1.0, "plain_envelope": 1.0,
+        "reach_50": 1.0, "reach_10": 1.0, "reach_1": 1.0, "arriving_short": 1.0,
+        "arriving_long": 1.0,
     },
     "crest": {
         "run_crest": 1.0, "run_crest_wide": 1.0, "full_crest": 1.0, "run_envelope": 0.5,

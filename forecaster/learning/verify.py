@@ -12,7 +12,7 @@ from itertools import pairwise
 
 import numpy as np
 
-from forecaster.learning.dataset import Dataset
+from forecaster.learning.dataset import PLAIN_NAMES, Dataset
 from forecaster.learning.features import WAVES_PER_INTERVAL
 from forecaster.learning.model import Model
 from forecaster.learning.scores import (
@@ -40,6 +40,8 @@ from forecaster.waves.heights import (
 
 REPLICATES = 400
 MIN_EVENTS_FOR_LINE = 200
+BARELY = 0.2  # coverage below which next to nothing is known
+COVERAGE_BANDS = (0.5, 0.8, 0.95, 1.0)
 RELIABILITY_EDGES = np.array([0, 0.002, 0.01, 0.05, 0.1, 0.2, 0.4, 0.6, 0.8, 1.0])
 FLOOR = 1e-6  # of a baseline's probability, so that one surprise is not an infinite score
 FEATURE_SETS = {
@@ -51,7 +53,10 @@ FEATURE_SETS = {
     "scattering": (
         "group_eigenvalue", "group_speed_offset", "group_eigenvalue_sum", "group_soliton_share",
         "group_chirp", "group_focus_nearness", "group_amplification", "record_eigenvalue",
-        "record_soliton_share",
+        "record_soliton_share", "unstable_modes", "open_bands", "widest_band", "arriving_soliton",
+        "arriving_short", "arriving_short_largest", "arriving_short_before",
+        "arriving_short_after", "arriving_long", "arriving_long_largest", "arriving_long_before",
+        "arriving_long_after",
     ),
     "forward run": (
         "unexplained", "run_height", "run_crest", "run_envelope", "run_height_wide",
@@ -59,7 +64,7 @@ FEATURE_SETS = {
         "full_height", "full_crest", "full_envelope", "linear_height", "linear_envelope",
         "fed_envelope", "reach_50", "reach_10", "reach_1",
     ),
-    "plain run": ("plain_height",),  # a baseline's, not in the feature table
+    "plain run": PLAIN_NAMES,  # a baseline's, not in the feature table
 }  # fmt: skip
 ABLATIONS = {
     "BFI and statistics": ("statistics",),
@@ -98,6 +103,13 @@ def forecast_rows(dataset: Dataset) -> Dataset:
     return dataset.rows(shown_rows(dataset))
 
 
+def barely_measured_rows(dataset: Dataset) -> Dataset:
+    """Downwave intervals beyond those that a forecast would show, some of whose waves are known."""
+    coverage = dataset.column("coverage")
+    downwave = dataset.column("distance_wavelengths") > 0
+    return dataset.rows(downwave & (coverage >= BARELY) & (coverage < HORIZON_COVERAGE))
+
+
 def score_row(label: str, p, y, sea, *, generator, replicates=REPLICATES) -> Row:
     """Scores of one set of cases; intervals from resampled seas."""
     p, y = np.clip(np.asarray(p, float), FLOOR, 1 - FLOOR), np.asarray(y, bool)
@@ -123,7 +135,7 @@ def model_table(model: Model, dataset: Dataset, ratio: float, *, generator) -> l
     groups = [
         *((f"{d:g} wavelengths", shown.distance == d) for d in np.unique(shown.distance)),
         *_bands("steepness", shown.true_steepness, (0.04, 0.07, 0.10, 0.14)),
-        *_bands("coverage", shown.column("coverage"), (0.5, 0.8, 0.95, 1.0)),
+        *_bands("coverage", shown.column("coverage"), COVERAGE_BANDS),
     ]
     for label, mask in groups:
         if mask.any():
@@ -197,10 +209,10 @@ def baselines(taught: Dataset, dataset: Dataset, ratio: float) -> dict[str, np.n
         calibrated = monotone_calibration(variable(taught, ratio), y)
         found[name] = calibrated(variable(dataset, ratio))
     found["kurtosis and largest wave"] = _logistic(taught, dataset, y)
-    known = np.isfinite(taught.plain_run)
-    if known.any() and np.isfinite(dataset.plain_run).all():
-        calibrated = monotone_calibration(taught.plain_run[known], y[known])
-        found["Dysthe forward run"] = calibrated(dataset.plain_run)
+    run, plain = PLAIN_NAMES.index("plain_height"), knows_plain_run(taught)
+    if plain.any() and knows_plain_run(dataset).all():
+        calibrated = monotone_calibration(taught.plain_run[plain, run], y[plain])
+        found["Dysthe forward run"] = calibrated(dataset.plain_run[:, run])
     return found
 
 
@@ -242,25 +254,32 @@ def baseline_table(model, taught, dataset, ratio, *, generator) -> list[dict]:
 
 
 def ablation(
-    taught: Dataset, datasets: dict[str, Dataset], settings: TrainSettings, ratio: float, *,
+    taught: Dataset, cases: dict[str, Dataset], settings: TrainSettings, ratio: float, *,
     generator, workers: int = 1, progress: Callable[[str], None] = lambda message: None,
 ) -> dict:  # fmt: skip
     """What each kind of feature adds: one model of two bags per set, fitted and scored alike.
 
+    Parameters
+    ----------
+    taught : Dataset
+        The training seas.
+    cases : dict of str to Dataset
+        Rows to score.
+    settings, ratio, generator, workers, progress
+        As for `verify`.
+
     Returns
     -------
     dict
-        For each of `datasets`: ``sets``, scores of each set of features, pooled and by distance;
-        ``gains``, gain in mean log score from one set to another, with its by-sea interval.
+        For each of `cases`: ``sets``, scores of each set of features, pooled, by distance and by
+        coverage; ``gains``, gain in mean log score from one set to another, with its by-sea
+        interval.  Beside a plain Dysthe run, models are taught on the rows that have one.
     """
-    shown = {place: forecast_rows(dataset) for place, dataset in datasets.items()}
-    told = {place: {} for place in datasets}
+    told = {place: {} for place in cases}
     plain = {
-        place: _with_plain_run(rows)
-        for place, rows in shown.items()
-        if np.isfinite(rows.plain_run).all()
+        place: _with_plain_run(rows) for place, rows in cases.items() if knows_plain_run(rows).all()
     }
-    whole = (ABLATIONS, taught, shown)
+    whole = (ABLATIONS, taught, cases)
     beside_dysthe = (PLAIN_ABLATIONS, _with_plain_run(taught), plain)
     for ablations, teach, asked in (whole, beside_dysthe) if plain else (whole,):
         for label, parts in ablations.items():
@@ -274,39 +293,48 @@ def ablation(
                 p = model.intervals(rows.features, rows.names, [ratio]).probability[:, 0]
                 told[place][label] = np.clip(p, FLOOR, 1 - FLOOR)
     return {
-        place: _compared_sets(told[place], rows, ratio, generator) for place, rows in shown.items()
+        place: _compared_sets(told[place], rows, ratio, generator) for place, rows in cases.items()
     }
 
 
+def knows_plain_run(dataset: Dataset) -> np.ndarray:
+    """(n,) whether the plain Dysthe run was computed for each row."""
+    return np.isfinite(dataset.plain_run).all(axis=1)
+
+
 def _with_plain_run(dataset: Dataset) -> Dataset:
-    """The rows for which the plain Dysthe run is known, with its height as one more feature."""
-    known = dataset.rows(np.isfinite(dataset.plain_run))
+    """The rows for which the plain Dysthe run is known, with what it says as more features."""
+    known = dataset.rows(knows_plain_run(dataset))
     return replace(
         known,
-        features=np.hstack([known.features, known.plain_run[:, None]]),
-        names=(*known.names, *FEATURE_SETS["plain run"]),
+        features=np.hstack([known.features, known.plain_run]),
+        names=(*known.names, *PLAIN_NAMES),
     )
 
 
 def _compared_sets(told, shown, ratio, generator) -> dict:
     """Scores of the probabilities `told` by each set of features for the same rows."""
     y = shown.height >= ratio
+    parts = {
+        "log_skill_by_distance": {f"{d:g}": shown.distance == d for d in np.unique(shown.distance)},
+        "log_skill_by_coverage": {
+            label.removeprefix("coverage "): mask
+            for label, mask in _bands("coverage", shown.column("coverage"), COVERAGE_BANDS)
+        },
+    }
     sets = []
     for label, p in told.items():
         row = score_row(label, p, y, shown.sea, generator=generator)
-        places = {f"{d:g}": shown.distance == d for d in np.unique(shown.distance)}
-        sets.append(
-            {
-                "features": label,
-                "log_skill": row.scores["log skill"],
-                "roc": row.scores["ROC"],
-                "log_skill_by_distance": {
-                    place: float(log_skill(p[mask], y[mask]))
-                    for place, mask in places.items()
-                    if 0 < y[mask].sum() < mask.sum()
-                },
+        by_part = {
+            name: {
+                place: float(log_skill(p[mask], y[mask]))
+                for place, mask in masks.items()
+                if 0 < y[mask].sum() < mask.sum()
             }
-        )
+            for name, masks in parts.items()
+        }
+        scores = {"log_skill": row.scores["log skill"], "roc": row.scores["ROC"]}
+        sets.append({"features": label, **scores, **by_part})
     gains = [
         {"from": less, "to": more, **_gain(told[less], told[more], y, shown.sea, generator)}
         for less, more in GAINS
@@ -388,8 +416,15 @@ def verify(
         for place, rows in elsewhere.items()
     }
     if taught is not None and settings is not None:
+        cases = {
+            "the seas above": forecast_rows(dataset),
+            f"the seas above, coverage {BARELY:g} to {HORIZON_COVERAGE:g}": (
+                barely_measured_rows(dataset)
+            ),
+            **{place: forecast_rows(rows) for place, rows in elsewhere.items()},
+        }
         result["ablation"] = ablation(
-            taught, {"the seas above": dataset, **elsewhere}, settings, ratios[0],
+            taught, cases, settings, ratios[0],
             generator=generator, workers=workers, progress=progress,
         )  # fmt: skip
     return result

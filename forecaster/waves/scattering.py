@@ -28,11 +28,13 @@ _CACHE = 2**14  # complex numbers worked on at a time
 _LEAF = 8  # shortest run of samples that is multiplied out directly
 _PIECE_AREA = 20.0  # largest integral of |q| over one piece: about six eigenvalues
 _SPAN_AREA = 60.0  # the same where only the phase of a is wanted
-# Rounds of starting points: a grid of {round: (factor of columns, ratio of rows, orders used)} or,
-# in the other rounds, points scattered over the region.
-_GRIDS = {0: (1, 1.3, 1), 2: (2, 1.15, 9), 5: (4, 1.1, 9)}
-_ROUNDS = 9
+_SPAN_DECAY = 16.0  # and largest -log |A| of one piece along the upper side of the contour
+_GRID_RATIO = 1.3  # of neighbouring heights in the grid of starting points
+# Round by round: where boxes of missing zeros are cut, and from what share of max |q| on a box
+# with one zero need not be cut again
+_CUTS = ((0.5377, 0.1), (0.4812, 0.01), (0.5513, 0.001))
 _ORDERS = (2, 4, 6, 8)
+_MARGIN = 1.05  # of the contour above max |q|, where no eigenvalue can be
 _PHASE_STEP = np.pi / 2  # largest change of arg a allowed between neighbours on the contour
 
 
@@ -57,6 +59,13 @@ def _substeps(q, parts):
             turn[n // 2] = np.cos(np.pi * shift)
         out[..., j] = np.fft.ifft(spectrum * turn) + q[..., :1] + slope * (index + shift)
     return out.reshape(*q.shape[:-1], n * parts)
+
+
+def _halved_length(n, unit):
+    """Length not below n that halves down to leaves, `unit` (a power of 2) pieces at least."""
+    while n / unit > 2 * _LEAF:
+        unit *= 2
+    return -(-n // unit) * unit
 
 
 def _transfer_polynomials(q, step, fine, coarse):
@@ -119,19 +128,23 @@ class _Jost:
     """
 
     corner_only = True
+    density = 5  # points of the contour for each sample
+    least_height = 0.0  # zeros below are not looked for, whatever the floor
 
     def __init__(self, levels, dt, *, least_pieces=1):
         """levels: {parts: (w, n parts) samples}, n the same for all."""
         self.dt = dt
         coarse, first = min(levels.items())
         self.rows, self.n = first.shape[0], first.shape[1] // coarse
-        area = np.abs(first).sum(axis=1).max(initial=0) * dt / coarse
+        size = np.abs(first)
+        area = size.sum(axis=1).max(initial=0) * dt / coarse
+        # semiclassically -log |A| is the integral of eta - (eta^2 - |q|^2)^(1/2)
+        top = _MARGIN * size.max(axis=1, keepdims=True)
+        decay = (top - np.sqrt(top**2 - size**2)).sum(axis=1).max(initial=0) * dt / coarse
         self.pieces = self._number(max(least_pieces, area / _PIECE_AREA))
-        self.spans = min(self.pieces, self._number(area / _SPAN_AREA))
-        unit = self.pieces
-        while self.n / unit > 2 * _LEAF:
-            unit *= 2
-        self.padded = -(-self.n // unit) * unit
+        spans = self._number(max(area / _SPAN_AREA, decay / _SPAN_DECAY))
+        self.spans = min(self.pieces, spans)
+        self.padded = _halved_length(self.n, self.pieces)
         self.parts = tuple(levels)
         self.weights = _extrapolation(self.parts)
         self.polynomials, self.long_polynomials = [], []
@@ -256,10 +269,14 @@ class _Floquet(_Jost):
     """exp(i lambda L)(trace of the monodromy matrix - 2 sign), for each row of periodic q."""
 
     corner_only = False
+    density = 10  # its zeros may be double
 
     def __init__(self, levels, dt, *, sign):
         super().__init__(levels, dt)
         self.sign = sign
+        # on the real axis there is a zero every pi/length, and a wave train of small energy lies
+        # just above: nearer to it than half a step of the contour nothing can be told apart
+        self.least_height = 0.5 * np.pi / (self.density * self.n * dt)
 
     def value(self, entries, step):
         columns = entries[0, :2], entries[0, 2:]
@@ -284,11 +301,11 @@ def _turns(phase, axis):
     return np.rint(np.diff(phase, axis=axis) / (2 * np.pi))
 
 
-def _guesses(function, rows, floor, top, columns, half, ratio, orders):
+def _guesses(function, rows, floor, top, columns, half):
     """One estimate of a zero in every grid cell around which arg a turns, as (row, lambda)."""
-    count = max(3, int(np.ceil(np.log(top / floor).max() / np.log(ratio))) + 1)
+    count = max(3, int(np.ceil(np.log(top / floor).max() / np.log(_GRID_RATIO))) + 1)
     eta = floor[:, None] * (top / floor)[:, None] ** np.linspace(0, 1, count)
-    values = function.on_lines(eta, columns, half, rows, orders)
+    values = function.on_lines(eta, columns, half, rows, 1)
     phase = np.angle(values)
     along, across = _turns(phase, 2), _turns(phase, 1)
     winding = along[:, 1:] - along[:, :-1] + across[:, :, :-1] - across[:, :, 1:]
@@ -363,16 +380,15 @@ def _turn(before, after):
 
 
 def _contour_count(function, rows, floor, top, columns, half):
-    """Zeros of a inside floor < Im < top, |Re| < pi half/(columns dt), by the argument principle.
-
-    The contour is halved wherever arg a changes by more than `_PHASE_STEP` between neighbours;
-    -1 for a row where that does not end because a zero lies on the contour.
-    """
+    """Zeros of a inside floor < Im < top, |Re| < pi half/(columns dt); -1 as of `_windings`."""
     step = np.pi / (columns * function.dt)
     lines = function.on_lines(np.stack([floor, top], 1), columns, half, rows, len(function.parts))
     real = step * np.arange(-half, half + 1)
-    share = np.linspace(0, 1, 16)[1:-1]
-    eta = floor[:, None] * (top / floor)[:, None] ** share
+    # arg a may change by the length of the record for each unit of eta: so close that no change of
+    # a turn less `_PHASE_STEP` passes unseen, and closer towards the floor
+    even = np.linspace(0, 1, 2 + int(function.n * function.dt * top.max() / 3))[1:-1]
+    eta = floor[:, None] * (top / floor)[:, None] ** np.linspace(0, 1, 16)[1:-1]
+    eta = np.sort(np.hstack([eta, floor[:, None] + (top - floor)[:, None] * even]), axis=1)
     right, left = half * step + 1j * eta, -half * step + 1j * eta[:, ::-1]
     sides = np.concatenate([right, left], axis=1)
     values, _ = function.at(np.repeat(rows, sides.shape[1]), sides.ravel())
@@ -380,6 +396,15 @@ def _contour_count(function, rows, floor, top, columns, half):
     points = [real + 1j * floor[:, None], right, real[::-1] + 1j * top[:, None], left]
     points = np.concatenate(points, axis=1)
     values = np.concatenate([lines[:, 0], on_right, lines[:, 1, ::-1], on_left], axis=1)
+    return _windings(function, rows, points, values)
+
+
+def _windings(function, rows, points, values):
+    """Zeros of a inside closed lines (r, p), one for each of rows (r,), by the argument principle.
+
+    The lines are halved wherever arg a changes by more than `_PHASE_STEP` between neighbours; -1
+    where that does not end because a zero lies on the line.
+    """
     after, value_after = np.roll(points, -1, axis=1), np.roll(values, -1, axis=1)
     turn = _turn(values, value_after)
     coarse = np.abs(turn) > _PHASE_STEP
@@ -480,14 +505,14 @@ def _zeros(function, levels, peak, floor):
     Raises NumericsError unless they number as many as the argument principle counts.
     """
     dt, rows = function.dt, np.arange(peak.size)
-    top, low = 1.05 * peak, floor * peak
+    top, low = _MARGIN * peak, np.maximum(floor * peak, function.least_height)
     coarse, first = min(levels.items())
     side = _side(first, dt / coarse, low, peak)
 
     def grid(columns):
         return columns, int(np.ceil(side * columns * dt / np.pi))
 
-    contour = grid(_fast_size(5 * function.n))
+    contour = grid(_fast_size(function.density * function.n))
     edge = np.pi * contour[1] / (contour[0] * dt)
     count = _contour_count(function, rows, low, top, *contour)
     for _ in range(4):
@@ -499,19 +524,24 @@ def _zeros(function, levels, peak, floor):
     zeros = [np.empty(0, complex) for _ in rows]
     suspects = [np.empty(0, complex) for _ in rows]
     missing = np.flatnonzero(count != 0)
-    for attempt in range(_ROUNDS):
+    for attempt in range(1 + len(_CUTS)):
         if missing.size == 0:
             break
         known = []
-        if attempt in _GRIDS:
-            finer, ratio, orders = _GRIDS[attempt]
-            fine = grid(finer * _fast_size(max(2.5 * function.n, min(10 * function.n, 1024))))
-            row, start = _guesses(
-                function, missing, 0.85 * low[missing], top[missing], *fine, ratio, orders
-            )
+        if attempt == 0:
+            fine = grid(_fast_size(max(2.5 * function.n, min(10 * function.n, 1024))))
+            row, start = _guesses(function, missing, 0.85 * low[missing], top[missing], *fine)
         else:
             known = [(i, value) for i in missing for value in zeros[i]]
-            row, start = _scattered(attempt, missing, low, top, count, zeros, edge)
+            cut, alone = _CUTS[attempt - 1]
+            starts = [
+                _separated(
+                    function, i, (-edge, edge, low[i], top[i]), zeros[i], cut, alone * peak[i]
+                )
+                for i in missing
+            ]
+            row = np.repeat(missing, [part.size for part in starts])
+            start = np.concatenate(starts)
         lam, settled = _polish(function, row, start, peak, known)
         for i in missing:
             new = np.concatenate([zeros[i], lam[(row == i) & settled]])
@@ -536,18 +566,52 @@ def _zeros(function, levels, peak, floor):
     return found
 
 
-def _scattered(attempt, missing, low, top, count, zeros, edge):
-    """Fresh starts for the rows in which zeros are still missing, never twice the same."""
-    row, start = [], []
-    for i in missing:
-        number = 4 * max(1, count[i] - zeros[i].size)
-        # golden-ratio (additive recurrence) points between floor and ceiling
-        step = np.arange(number) + 17 * attempt
-        eta = low[i] * (top[i] / low[i]) ** ((0.5 + step * 0.7548776662) % 1)
-        extent = max(np.abs(zeros[i].real).max(initial=0) * 1.5, 0.25 * edge)
-        start.append(extent * (2 * ((0.5 + step * 0.5698402910) % 1) - 1) + 1j * eta)
-        row.append(np.full(number, i))
-    return np.concatenate(row), np.concatenate(start)
+def _separated(function, row, box, known, cut, small):
+    """A start for each zero of one row that is in `box` and not among `known`.
+
+    The box (left, right, low, top) is cut in two, at the share `cut` of its longer side, until the
+    argument principle finds one zero in each part of size `small`, or a part is so much smaller
+    that its zeros may be one multiple zero.
+    """
+
+    def count(left, right, low, top):
+        corners = np.array([left + 1j * low, right + 1j * low, right + 1j * top, left + 1j * top])
+        sides = [
+            first + (last - first) * np.linspace(0, 1, 3 + int(abs(last - first) * length))[:-1]
+            for first, last in zip(corners, np.roll(corners, -1), strict=True)
+        ]
+        line = np.concatenate(sides)
+        values, _ = function.at(np.full(line.size, row), line)
+        return int(_windings(function, np.array([row]), line[None], values[None])[0])
+
+    def unknown(box, number):
+        left, right, low, top = box
+        inside = (known.real > left) & (known.real < right) & (known.imag > low)
+        return number - (inside & (known.imag < top)).sum()
+
+    length = function.n * function.dt
+    starts, parts = [], [(box, count(*box))]
+    while parts:
+        (left, right, low, top), number = parts.pop()
+        missing = unknown((left, right, low, top), number)
+        size = max(right - left, top - low)
+        if missing <= 0:
+            continue
+        if size < (small if number == 1 else 1e-3 * small):
+            turn = np.exp(2j * np.pi * np.arange(missing) / missing)
+            starts.append(0.5 * (left + right + 1j * (low + top)) + 0.1 * size * turn)
+            continue
+        if right - left > top - low:
+            at = left + cut * (right - left)
+            halves = (left, at, low, top), (at, right, low, top)
+        else:
+            at = low + cut * (top - low)
+            halves = (left, right, low, at), (left, right, at, top)
+        first = count(*halves[0])
+        if first < 0:  # a zero on the cut: the next round cuts elsewhere
+            continue
+        parts += [(halves[0], first), (halves[1], number - first)]
+    return np.concatenate(starts) if starts else np.empty(0, complex)
 
 
 def _within(lam, low, top, edge):
@@ -635,10 +699,19 @@ def scaled_envelope(envelope: Envelope) -> tuple[np.ndarray, float]:
     >>> round(float(q[0].real * np.sqrt(2) / wave.k0), 12), dt
     (2.0, 0.35)
     """
+    return np.conj(envelope.values) * envelope_scale(envelope), envelope.dt * envelope.omega0
+
+
+def envelope_scale(envelope: Envelope) -> float:
+    """|q| per metre of envelope amplitude [1/m], the factor of `scaled_envelope`.
+
+    >>> wave = Envelope(np.zeros(4), 0.5, 0.0, omega0=0.7, k0=0.7**2 / 9.81)
+    >>> bool(np.isclose(envelope_scale(wave), wave.k0 / np.sqrt(2)))
+    True
+    """
     kh = envelope.k0 * envelope.depth
     cubic = nonlinear_coefficient(kh) * envelope.k0**3 / (2 * group_ratio(kh) * np.tanh(kh))
-    factor = np.sqrt(max(float(cubic), 0.0) / (_curvature(envelope) * envelope.omega0**2))
-    return np.conj(envelope.values) * factor, envelope.dt * envelope.omega0
+    return float(np.sqrt(max(float(cubic), 0.0) / (_curvature(envelope) * envelope.omega0**2)))
 
 
 def _checked(q, dt, floor=0.02):
@@ -870,7 +943,8 @@ def periodic_spectrum(q, dt, *, floor=0.02, order=6) -> np.ndarray:
     (m,) complex array
         All l with Im l above floor max|q| where the trace of the monodromy matrix is +2 or -2,
         double points twice, largest imaginary part first.  Simple points end bands; a double
-        point is an unstable mode of the train at rest.
+        point is an unstable mode of the train at rest.  Points nearer to the real axis than about
+        pi/20 over the length are not looked for: they belong to waves as good as linear.
 
     Raises
     ------
@@ -894,7 +968,9 @@ def periodic_spectrum(q, dt, *, floor=0.02, order=6) -> np.ndarray:
     q = _checked(q, dt, floor)
     if order not in _ORDERS:
         raise InputError(f"order must be one of {_ORDERS}, got {order!r}")
-    n = -(-q.size // 64) * 64  # a length that can be halved
+    area = 1.1 * np.abs(q).sum() * dt
+    # a length that is cut into pieces without a gap between the periods
+    n = _halved_length(q.size, 2 ** int(np.ceil(np.log2(max(64, area / _PIECE_AREA)))))
     dt = dt * q.size / n
     parts = range(1, order // 2 + 1)
     levels = {m: _resampled(q, n * m, (1 / m - 1) / (2 * n))[None] for m in parts}
@@ -936,6 +1012,11 @@ def _cut(levels, first, length, taper):
 def _rise(x):
     """Half a cosine from 0 at x <= 0 to 1 at x >= 1."""
     return 0.5 - 0.5 * np.cos(np.pi * np.clip(x, 0, 1))
+
+
+def _hump(x):
+    """Half a cosine from 0 at x <= 0 to 1 at x = 1/2 and back to 0 at x >= 1."""
+    return _rise(2 * x) * _rise(2 - 2 * x)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -1029,6 +1110,93 @@ def windowed_content(q, dt, centres, *, half_width=12 * np.pi, floor=0.02) -> Wi
         focus_distance=focus.distance,
         amplification=focus.amplification,
     )
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class WindowedEnergy:
+    """How the energy of m windows of one record is spread over speeds, in scaled units.
+
+    Parameters
+    ----------
+    centre : (m,) array
+        Scaled time of each window's middle from the first sample.
+    speed : (s,) array
+        dT/dX, evenly spaced: by how much scaled time energy arrives later, per scaled distance,
+        than energy at the carrier's group speed.
+    energy : (m, s) array
+        Part of each window's integral of |q|^2 dT near each speed.
+    """
+
+    centre: np.ndarray
+    speed: np.ndarray
+    energy: np.ndarray
+
+
+def windowed_energy(q, dt, centres, *, half_width, floor=0.02) -> WindowedEnergy:
+    """Energy of windows of a record by the speed at which the scattering spectrum moves it.
+
+    Parameters
+    ----------
+    q : (n,) complex array
+        Scaled envelope of the record.
+    dt : float
+        Scaled step omega0 dt, not seconds.
+    centres : (m,) array
+        Scaled time from the first sample, met to half a step; windows may reach outside the
+        record (q = 0 there).
+    half_width : float
+        Scaled.  q is weighted with 1 at the centre, falling by half a cosine to 0 at both ends.
+    floor : float
+        As in `discrete_spectrum`.
+
+    Returns
+    -------
+    WindowedEnergy
+
+    Raises
+    ------
+    InputError, NumericsError
+        As `discrete_spectrum`, whose fourth-order path and certificate this uses.
+
+    Notes
+    -----
+    By the trace formula (Faddeev & Takhtajan 1987, ch. I, eq. 7.17) the integral of |q|^2 is
+    (1/pi) int -ln |a(xi)|^2 d xi of dispersive waves and 4 Im l of each eigenvalue l.  In the
+    evolution downwave the first move at dT/dX = -4 xi, a soliton at -4 Re l: where the phases of
+    the waves are left out this says when energy arrives.  For small q it is the short-time
+    spectrum at the group speeds of linear deep water, which dT/dX = -4 xi holds exactly.
+    Eigenvalues under the floor are in neither part.
+
+    Examples
+    --------
+    A soliton that is slower than the carrier:
+
+    >>> t = np.arange(0, 400, 0.5)
+    >>> q = 0.2 / np.cosh(0.2 * (t - 200)) * np.exp(0.1j * t)
+    >>> found = windowed_energy(q, 0.5, [200.0], half_width=200)
+    >>> total = found.energy[0].sum()
+    >>> round(float(total), 2), round(float(found.energy[0] @ found.speed / total), 2)
+    (0.4, 0.2)
+    """
+    q = _checked(q, dt, floor)
+    centres = np.atleast_1d(np.asarray(centres, float))
+    length = max(4, round(2 * half_width / dt))
+    first = np.rint(centres / dt - length / 2 + 0.5).astype(int)
+    levels = _cut(_levels(q[None], 4), first, length, lambda position: _hump(position / length))
+    columns = _fast_size(4 * length)
+    half = columns // 2
+    everyone = np.arange(centres.size)
+    a = _Jost(levels, dt).on_lines(np.zeros((centres.size, 1)), columns, half, everyone, 2)[:, 0]
+    step = np.pi / (columns * dt)
+    # |a| <= 1 on the real axis; where there is no signal rounding and extrapolation may exceed it
+    energy = -2 / np.pi * step * np.log(np.clip(np.abs(a), 1e-300, 1.0))
+    for row, values in enumerate(_eigenvalues(levels, dt, floor)):
+        place = np.clip(values.real / step + half, 0, 2 * half)
+        low = np.minimum(place.astype(int), 2 * half - 1)
+        np.add.at(energy[row], low, 4 * values.imag * (low + 1 - place))
+        np.add.at(energy[row], low + 1, 4 * values.imag * (place - low))
+    middle = (first + (length - 1) / 2) * dt
+    return WindowedEnergy(middle, -4 * step * np.arange(-half, half + 1), energy)
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -11,7 +11,7 @@ docs/scattering.md) they do, by steepness and above all where a piece is cut out
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from math import isfinite
 
 import numpy as np
@@ -23,6 +23,7 @@ from forecaster.waves.scattering import (
     continuous_energy,
     discrete_spectrum,
     eigenvalue_locations,
+    envelope_scale,
     evolution_scale,
     group_content,
     periodic_spectrum,
@@ -80,12 +81,12 @@ class PeriodicModes:
     unstable_modes : int
         Pairs of points joined above the axis: groups that grow and fade again.
     open_bands : int
-        Those of them whose points lie more than `OPEN_BAND` apart.
+        Those of them whose points lie more than `OPEN_BAND` units apart.
     single_points : int
         Points joined to their mirror image across the axis (stable wave trains), or to a point too
         low to be looked for.
     widest_band : float
-        Largest distance between the points of a pair, as the height of a soliton over Hs.
+        Largest distance between the points of a pair, in the unit asked for.
     """
 
     points: int
@@ -113,6 +114,7 @@ class ScatteringSpectrum:
         Of the wave energy: in the eigenvalues above, and in waves that disperse.  What is left is
         in eigenvalues too small to be looked for.
     periodic : PeriodicModes
+        In `soliton_unit`: widths as the height of a soliton over Hs.
     drift, group_drift : float
         `expected_drift` of the whole and of a group.
     remarks : tuple of str
@@ -207,6 +209,46 @@ def paired_ends(points) -> tuple[np.ndarray, np.ndarray]:
     return np.array(pairs, complex).reshape(-1, 2), np.array(alone, complex)
 
 
+def soliton_unit(envelope: Envelope, sea: SeaState) -> float:
+    """Im of the eigenvalue whose soliton has the envelope height 2|A| = Hs: |q| per metre Hs/4."""
+    return envelope_scale(envelope) * sea.hs / 4
+
+
+def periodic_modes(q, dt, *, unit: float, order: int = 6) -> PeriodicModes:
+    """Summary of the main spectrum of a record repeated for ever.
+
+    Parameters
+    ----------
+    q, dt, order
+        As for `scattering.periodic_spectrum`.
+    unit : float
+        Distance in the plane of eigenvalues that counts as 1, such as `soliton_unit`.
+
+    Raises
+    ------
+    InputError, NumericsError
+        As `scattering.periodic_spectrum`.
+
+    Examples
+    --------
+    A plane wave with one unstable mode:
+
+    >>> modes = periodic_modes(np.ones(64), 5 / 64, unit=1.0)
+    >>> modes.points, modes.unstable_modes, modes.open_bands, modes.single_points
+    (3, 1, 0, 1)
+    """
+    points = periodic_spectrum(q, dt, order=order)
+    pairs, alone = paired_ends(points)
+    widths = np.abs(pairs[:, 0] - pairs[:, 1]) / unit
+    return PeriodicModes(
+        points=points.size,
+        unstable_modes=len(pairs),
+        open_bands=int((widths > OPEN_BAND).sum()),
+        single_points=alone.size,
+        widest_band=float(widths.max(initial=0.0)),
+    )
+
+
 def scattering_spectrum(record: Record, sea: SeaState) -> ScatteringSpectrum:
     """Eigenvalues, groups, energy shares and periodic modes of a record.
 
@@ -255,31 +297,26 @@ def scattering_spectrum(record: Record, sea: SeaState) -> ScatteringSpectrum:
         margin=0.0,
     )
     q, dt = scaled_envelope(envelope)
-    unit, _ = scaled_envelope(replace(envelope, values=np.ones(2)))
-    per_metre = float(unit[0].real)
+    unit = soliton_unit(envelope, sea)
     values = discrete_spectrum(q, dt)
     energy = float((np.abs(q) ** 2).sum() * dt)
     times = envelope.start + eigenvalue_locations(q, dt, values) / envelope.omega0
     speed = float(group_velocity(envelope.omega0, envelope.depth))
     slowness = 1 / speed - 4 * values.real / (envelope.omega0 * evolution_scale(envelope))
 
-    def height(distance):
-        return 4 * distance / per_metre if per_metre else 0.0
-
+    # in too shallow a water there are no eigenvalues to be measured
+    ratios = values.imag / unit if unit else values.imag
     located = tuple(
         LocatedEigenvalue(
             value=complex(value),
             time=float(time),
-            height=float(height(value.imag)),
-            height_ratio=float(height(value.imag) / sea.hs),
+            height=float(ratio * sea.hs),
+            height_ratio=float(ratio),
             speed=float(1 / slow),
             speed_offset=float(1 / slow / speed - 1),
         )
-        for value, time, slow in zip(values, times, slowness, strict=True)
+        for value, ratio, time, slow in zip(values, ratios, times, slowness, strict=True)
     )
-    points = periodic_spectrum(q, dt)
-    pairs, alone = paired_ends(points)
-    widths = np.array([height(width) / sea.hs for width in np.abs(pairs[:, 0] - pairs[:, 1])])
     drift, group_drift = expected_drift(sea.steepness)
     return ScatteringSpectrum(
         envelope=envelope,
@@ -288,16 +325,10 @@ def scattering_spectrum(record: Record, sea: SeaState) -> ScatteringSpectrum:
         groups=group_content(envelope),
         discrete_share=4 * float(values.imag.sum()) / energy if energy else 0.0,
         continuous_share=continuous_energy(q, dt) / energy if energy else 0.0,
-        periodic=PeriodicModes(
-            points=points.size,
-            unstable_modes=len(pairs),
-            open_bands=int((widths > OPEN_BAND).sum()),
-            single_points=alone.size,
-            widest_band=float(widths.max(initial=0.0)),
-        ),
+        periodic=periodic_modes(q, dt, unit=unit or 1.0),
         drift=drift,
         group_drift=group_drift,
-        remarks=_remarks(sea, drift, group_drift, focuses=per_metre > 0),
+        remarks=_remarks(sea, drift, group_drift, focuses=unit > 0),
     )
 
 

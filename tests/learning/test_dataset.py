@@ -6,6 +6,7 @@ import pytest
 from forecaster.errors import InputError, NumericsError
 from forecaster.learning import dataset as module
 from forecaster.learning.dataset import (
+    PLAIN_NAMES,
     VIEWS,
     Dataset,
     build,
@@ -197,15 +198,21 @@ def test_true_steepness_and_distance_are_those_of_the_sea_drawn(sea, rows):
 def test_a_plain_run_is_computed_only_when_asked_for(sea, rows):
     assert np.isnan(member_rows(ONE, 0, sea).plain_run).all()
     # a sea of waves, followed where it is covered and at rest where it is not
-    assert rows.plain_run[rows.column("coverage") > 0.9].min() > 0.3
-    assert rows.plain_run.max() < 3
+    height = rows.plain_run[:, PLAIN_NAMES.index("plain_height")]
+    assert height[rows.column("coverage") > 0.9].min() > 0.3
+    assert height.max() < 3
+    # not the run of the model itself, but near it
+    of_the_model = rows.column("run_height")[rows.column("coverage") > 0.9]
+    difference = np.abs(height[rows.column("coverage") > 0.9] - of_the_model)
+    assert 0 < np.median(difference) < 0.2
 
 
 def test_a_plain_run_is_computed_for_the_first_records_only(sea):
     recipe = replace(ONE, views=replace(VIEW, per_sensor=2))
     rows = member_rows(recipe, 0, sea, plain_records=1)
     assert set(rows.record.tolist()) == {0, 1}
-    assert np.array_equal(np.isnan(rows.plain_run), rows.record == 1)
+    assert np.array_equal(np.isnan(rows.plain_run).all(axis=1), rows.record == 1)
+    assert np.isfinite(rows.plain_run[rows.record == 0]).all()
 
 
 def test_a_sensor_without_a_gauge_downwave_gives_no_rows_of_that_distance(sea):

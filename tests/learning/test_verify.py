@@ -15,6 +15,7 @@ from forecaster.learning.verify import (
     FEATURE_SETS,
     PLAIN_ABLATIONS,
     ablation,
+    barely_measured_rows,
     baseline_table,
     forecast_rows,
     horizon_table,
@@ -39,8 +40,8 @@ def few_replicates():
 def seas():
     """The tiny seas, with a stand-in for the plain run: the height it is to tell, and noise."""
     data = tiny_model.dataset()
-    noise = np.random.default_rng(4).normal(0, 0.3, data.height.size)
-    return replace(data, plain_run=(data.height + noise).astype(np.float32))
+    noise = np.random.default_rng(4).normal(0, 0.3, data.plain_run.shape)
+    return replace(data, plain_run=(data.height[:, None] + noise).astype(np.float32))
 
 
 def test_the_feature_sets_of_the_ablation_hold_every_feature_once():
@@ -53,6 +54,14 @@ def test_forecast_rows_are_half_measured_or_at_the_sensor(seas):
     downwave = shown.column("distance_wavelengths") > 0
     assert (shown.column("coverage")[downwave] >= 0.5).all()
     assert (~downwave).sum() == (seas.column("distance_wavelengths") == 0).sum()
+
+
+def test_barely_measured_rows_are_those_a_forecast_does_not_show(seas):
+    beyond = barely_measured_rows(seas).column("coverage")
+    assert beyond.size and beyond.min() >= 0.2 and beyond.max() < 0.5
+    # by hand: the two masks share no row
+    shown = forecast_rows(seas)
+    assert beyond.size + shown.height.size <= seas.height.size
 
 
 def test_scores_of_a_row_equal_general_purpose_code(seas):
@@ -148,9 +157,16 @@ def test_verify_is_ready_for_json_and_skips_what_has_no_events(seas):
 @pytest.mark.slow
 def test_an_ablation_fits_each_set_and_tells_gains(seas):
     table = ablation(
-        seas, {"here": seas}, tiny_model.SETTINGS, RATIO, generator=np.random.default_rng(0)
+        seas,
+        {"here": forecast_rows(seas)},
+        tiny_model.SETTINGS,
+        RATIO,
+        generator=np.random.default_rng(0),
     )["here"]
     assert [row["features"] for row in table["sets"]] == [*ABLATIONS, *PLAIN_ABLATIONS]
+    assert {name for row in table["sets"] for name in row["log_skill_by_coverage"]} <= {
+        "0.5-0.8", "0.8-0.95", "0.95-1"
+    }  # fmt: skip
     skill = {row["features"]: row["log_skill"][0] for row in table["sets"]}
     assert skill["+ forward run"] > skill["BFI and statistics"]
     assert skill["+ Dysthe run"] > skill["BFI and statistics"]

@@ -6,6 +6,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy.integrate import solve_ivp
 from scipy.linalg import eigvals
+from scipy.optimize import brentq
 from scipy.special import gamma
 
 from forecaster.datatypes import Envelope
@@ -25,6 +26,7 @@ from forecaster.waves.scattering import (
     segment_groups,
     soliton_positions,
     windowed_content,
+    windowed_energy,
 )
 
 
@@ -379,10 +381,54 @@ def test_equal_distant_solitons_give_a_double_eigenvalue():
 
 def test_the_certificate_refuses_what_it_cannot_prove(monkeypatch):
     q = 2.3 * sech(line(20, 0.1))
-    monkeypatch.setattr(scattering, "_ROUNDS", 0)
+    monkeypatch.setattr(scattering, "_guesses", lambda *_: (np.empty(0, int), np.empty(0)))
+    monkeypatch.setattr(scattering, "_CUTS", ())
     with pytest.raises(NumericsError, match="argument principle counts 2") as caught:
         discrete_spectrum(q, 0.1)
     assert [x.size for x in caught.value.achieved] == [0]
+
+
+def test_what_the_grid_of_starts_misses_is_found_by_cutting_boxes(monkeypatch):
+    # exact: (2.3 - 1/2 - j) i, and a chirped group that the box must be cut around in both ways
+    t = line(40, 0.1)
+    group = 1.5 * sech(t - 15) * np.exp(1j * t) + 1.2 * sech(t + 15) * np.exp(-0.6j * t)
+    expected = discrete_spectrum(group, 0.1)
+    monkeypatch.setattr(scattering, "_guesses", lambda *_: (np.empty(0, int), np.empty(0)))
+    np.testing.assert_allclose(discrete_spectrum(2.3 * sech(t), 0.1), [1.8j, 0.8j], atol=1e-5)
+    np.testing.assert_allclose(discrete_spectrum(group, 0.1), expected, atol=1e-9)
+    assert expected.size == 2 and np.ptp(expected.real) > 0.5
+
+
+@pytest.mark.parametrize(
+    "steepness, periods",
+    [
+        (0.05, 60),
+        (0.05, 250),
+        (0.1, 120),
+        (0.1, 180),
+        (0.1, 250),
+        (0.2, 60),
+        (0.2, 120),
+        (0.2, 180),
+    ],
+)
+def test_regular_waves_have_the_eigenvalues_of_a_box(steepness, periods):
+    # exact: a box of area A L has floor(A L/pi + 1/2) eigenvalues, i eta with
+    # kappa cot(kappa L) = -eta, kappa^2 = A^2 - eta^2; hundreds of periods crowd them below i A
+    height, dt = steepness / np.sqrt(2), 2 * np.pi / 8
+    length = 8 * periods * dt
+    found = discrete_spectrum(np.full(8 * periods, height), dt)
+    # one root of kappa cos + eta sin between kappa L = (j + 1/2) pi and (j + 1) pi
+    number = int(height * length / np.pi + 0.5)
+    exact = []
+    for j in range(number):
+        ends = (j + 0.5) * np.pi / length, min((j + 1) * np.pi / length, height * (1 - 1e-12))
+        kappa = brentq(
+            lambda k: k * np.cos(k * length) + np.sqrt(height**2 - k**2) * np.sin(k * length), *ends
+        )
+        exact.append(np.sqrt(height**2 - kappa**2))
+    assert found.size == number
+    np.testing.assert_allclose(found, 1j * np.array(exact), atol=2e-4 * height)
 
 
 def test_a_packet_keeps_its_eigenvalues_and_a_window_of_a_sea_does_not():
@@ -413,6 +459,26 @@ def test_plane_wave_main_spectrum():
     exact = np.concatenate([[height], np.repeat(np.sqrt(height**2 - (n * np.pi / length) ** 2), 2)])
     found = periodic_spectrum(np.full(100, height), length / 100, order=8)
     np.testing.assert_allclose(found, 1j * exact, atol=1e-6)
+
+
+@pytest.mark.parametrize("periods, per_period", [(60, 6), (180, 6), (250, 6), (210, 5), (100, 11)])
+def test_long_plane_waves_have_exactly_their_unstable_modes(periods, per_period):
+    # published: Ma & Ablowitz 1981, as above, for lengths that must be cut into unlike pieces
+    height, dt = 0.1 / np.sqrt(2), 2 * np.pi / per_period
+    length = periods * 2 * np.pi
+    n = np.arange(1, int(height * length / np.pi) + 1)
+    exact = np.concatenate([[height], np.repeat(np.sqrt(height**2 - (n * np.pi / length) ** 2), 2)])
+    found = periodic_spectrum(np.full(periods * per_period, height), dt, order=4)
+    assert found.size == exact.size
+    np.testing.assert_allclose(found, 1j * exact, atol=5e-5)
+
+
+def test_a_train_too_gentle_to_be_unstable_is_told_from_rounding():
+    # exact: A L < pi leaves the band end i A and no unstable mode; the zeros on the real axis, one
+    # every pi/L, are not mistaken for points above it
+    for area in (0.5, 2.5):
+        found = periodic_spectrum(np.full(600, area / 600), 1.0)
+        np.testing.assert_allclose(found, [1j * area / 600], rtol=1e-3)
 
 
 def test_breather_spectra():
@@ -449,6 +515,78 @@ def test_periodic_spectrum_holds_the_eigenvalues_of_a_localised_packet():
     q = 2.3 * sech(line(20, 0.1))
     found = periodic_spectrum(q, 0.1, order=8)
     np.testing.assert_allclose(found[:4], [1.8j, 1.8j, 0.8j, 0.8j], atol=1e-6)
+
+
+# --- energy by speed ----------------------------------------------------------------------------
+
+
+def weighted(q, dt, centre, half_width):
+    """q times half a cosine about `centre`: what a window of `windowed_energy` sees."""
+    distance = (np.arange(q.size) * dt - centre) / half_width
+    return np.where(np.abs(distance) < 1, 0.5 + 0.5 * np.cos(np.pi * distance), 0) * q
+
+
+@pytest.mark.parametrize("seed", range(3))
+def test_energy_by_speed_obeys_both_trace_formulas(seed):
+    # published: Faddeev & Takhtajan 1987, ch. I, sec. 7: with eigenvalues and continuous spectrum
+    # together energy int |q|^2 dT, and momentum 2 int Im(q* q_T) dT, which is the energy times the
+    # speed of its centroid, are those of the window
+    q, dt = random_sea(seed, steepness=0.25, n=960)
+    centres, half = dt * np.array([200.5, 480.5, 700.5]), 10 * 2 * np.pi
+    found = windowed_energy(q, dt, centres, half_width=half)
+    solitons = 0
+    for centre, middle, energy in zip(centres, found.centre, found.energy, strict=True):
+        assert middle == pytest.approx(centre, abs=1e-9)
+        window = weighted(q, dt, centre, half)
+        solitons += discrete_spectrum(window, dt, order=4).size
+        wanted = (np.abs(window) ** 2).sum() * dt
+        k = 2 * np.pi * np.fft.fftfreq(q.size, dt)
+        slope = np.fft.ifft(1j * k * np.fft.fft(window))
+        momentum = 2 * (window.conj() * slope).imag.sum() * dt
+        # eigenvalues below the floor are left out
+        assert energy.sum() == pytest.approx(wanted, rel=0.06)
+        assert energy @ found.speed == pytest.approx(momentum, abs=0.06 * wanted)
+    assert solitons > 3
+
+
+def test_energy_by_speed_of_small_waves_is_their_power_spectrum():
+    # exact: for small q, -ln|a(xi)|^2 = |Fourier transform at -2 xi|^2 (Born approximation)
+    q, dt = random_sea(1, n=960)
+    q, half, centre = 1e-3 * q, 12 * np.pi, 300.5 * dt
+    found = windowed_energy(q, dt, [centre], half_width=half)
+    window = weighted(q, dt, centre, half)
+    frequency = found.speed / 2
+    transform = np.exp(-1j * frequency[:, None] * dt * np.arange(q.size)) @ window * dt
+    wanted = np.abs(transform) ** 2 / (2 * np.pi) * abs(frequency[1] - frequency[0])
+    inner = np.abs(frequency) < 0.6 * np.pi / dt  # the split step is fourth order in l dt
+    np.testing.assert_allclose(found.energy[0, inner], wanted[inner], atol=2e-3 * wanted.max())
+
+
+def test_energy_of_a_soliton_is_at_its_speed():
+    # exact: l = xi + i eta carries 4 eta at dT/dX = -4 xi (Zakharov & Shabat 1972)
+    dt, centre = 0.25, 200.0
+    t = np.arange(1600) * dt - centre
+    for xi, eta in ((0.0, 0.1), (0.08, 0.15), (-0.11, 0.07)):
+        q = 2 * eta * sech(2 * eta * t) * np.exp(-2j * xi * t)
+        found = windowed_energy(q, dt, [centre], half_width=centre)
+        assert found.energy.sum() == pytest.approx(4 * eta, rel=0.01)
+        near = np.abs(found.speed + 4 * xi) < 2 * abs(found.speed[1] - found.speed[0])
+        assert found.energy[0, near].sum() == pytest.approx(4 * eta, rel=0.02)
+
+
+def test_energy_moves_as_the_cubic_equation_moves_it():
+    # slow twin: a packet carried by split steps; its centroid moves at the mean speed
+    dt = 2 * np.pi / 10
+    t = line(300, dt)
+    q = 0.15 * sech(t / 10) * np.exp(0.12j * t + 0.002j * t**2)
+    found = windowed_energy(q, dt, [300.0], half_width=3000.0)
+    speed = found.energy[0] @ found.speed / found.energy[0].sum()
+    after = evolved(q, dt, 100.0, 400)
+
+    def centroid(x):
+        return (np.abs(x) ** 2 * t).sum() / (np.abs(x) ** 2).sum()
+
+    assert centroid(after) - centroid(q) == pytest.approx(100 * speed, rel=2e-3)
 
 
 # --- metres, seconds, depth ---------------------------------------------------------------------
