@@ -4,7 +4,7 @@ The public names, loaded when they are first used:
 
 ======================  =========================================================================
 `score`                 record (file, ``"-"`` or `Record`) -> `Forecast`: the whole answer
-`check`                 record -> quality and sea state only
+`check`                 record -> quality, sea state and waves only
 `along_wave_distance`   range and bearing -> distance along the waves
 `read_record`           file -> `Record`
 `record_from_arrays`    numbers in memory -> `Record`

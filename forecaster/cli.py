@@ -380,7 +380,7 @@ def _overall(codes: list[int]) -> int:
     help="Draw the scattering spectrum: .png, .svg or .pdf (with --scattering).",
 )  # fmt: skip
 def check(record, as_json, scattering, figure, **options):
-    """Quality and sea state of a record, no forecast.
+    """Quality, sea state and waves of a record, no forecast.
 
     RECORD is a file or - for standard input.
     """
@@ -394,7 +394,7 @@ def check(record, as_json, scattering, figure, **options):
     done = forecasting.check(record, **options)
     failed = done.quality.verdict == "fail"
     spectrum = forecasting.scattering(done) if scattering and not failed else None
-    found = done.record, done.quality, done.sea_state, spectrum
+    found = done.record, done.quality, done.sea_state, done.waves, spectrum
     if as_json:
         click.echo(dumps(check_document(*found, program_version=program_version())))
     else:

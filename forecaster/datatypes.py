@@ -282,6 +282,43 @@ class Waves:
             object.__setattr__(self, name, _frozen(getattr(self, name)))
 
 
+@dataclass(frozen=True, slots=True)
+class WaveStatistics:
+    """The zero-down-crossing waves of a record, told by their number, largest and runs.
+
+    Parameters
+    ----------
+    count : int
+        Complete waves.
+    highest : float [m]
+        Largest height; 0 without a wave, as the ratios and the crest.
+    highest_ratio : float
+        The same over hs.
+    highest_time : float [s]
+        Of its crest; NaN without a wave.
+    highest_crest : float [m]
+    crest_ratio : float
+        The same over hs.
+    expected_ratio : float
+        Mean over many records of the largest of `count` heights, over hs.
+    run_length : float
+        Mean number of successive waves of hs or more; 0 without one.
+    total_run : float
+        Mean number of waves from the begin of one such run to that of the next; ``inf`` with
+        fewer than two runs.
+    """
+
+    count: int
+    highest: float
+    highest_ratio: float
+    highest_time: float
+    highest_crest: float
+    crest_ratio: float
+    expected_ratio: float
+    run_length: float
+    total_run: float
+
+
 @dataclass(frozen=True, slots=True, eq=False)
 class WaveGroup:
     """One wave group in a record and what its scattering spectrum says.

@@ -24,6 +24,7 @@ from forecaster.datatypes import (
     Record,
     SeaState,
     Target,
+    WaveStatistics,
 )
 from forecaster.errors import InputError, OutsideDomain, QualityError
 from forecaster.learning.domain import BOUNDING, assess
@@ -34,7 +35,7 @@ from forecaster.learning.features import (
     Scene,
     feature_table,
     first_look,
-    look_ahead,
+    run_ahead,
 )
 from forecaster.learning.model import CRITERIA, Model, interval_90
 from forecaster.learning.registry import load_model
@@ -47,6 +48,8 @@ from forecaster.waves.heights import (
     forristall_height_exceedance,
     largest_exceedance,
     predictive_base_rate,
+    wave_statistics,
+    zero_crossing_waves,
 )
 from forecaster.waves.linear import group_velocity
 from forecaster.waves.scattering import group_content
@@ -74,11 +77,12 @@ CAVEATS = (
 
 @dataclass(frozen=True, slots=True)
 class Checked:
-    """A record as it will be used, its quality and, unless that failed, its sea state."""
+    """A record as it will be used, its quality and, unless that failed, its sea and its waves."""
 
     record: Record
     quality: QualityReport
     sea_state: SeaState | None
+    waves: WaveStatistics | None
 
 
 def along_wave_distance(range_m, bearing_deg, waves_from_deg) -> tuple[float, float]:
@@ -129,7 +133,7 @@ def check(
     record, *, at=None, window=DEFAULT_WINDOW, depth=None, sensor=None, spread=None,
     **reading_options,
 ) -> Checked:  # fmt: skip
-    """Quality and sea state of a record; no model is needed.
+    """Quality, sea state and waves of a record; no model is needed.
 
     Parameters
     ----------
@@ -173,11 +177,12 @@ def check(
     record = remove_drift(as_read)
     quality = check_quality(record, as_read=as_read)
     if quality.verdict == "fail":
-        return Checked(record, quality, None)
+        return Checked(record, quality, None, None)
     record = _measured_part(without_spikes(record))
     record = reading.bridge_gaps(record, longest=0.25 * peak_period(record))
     sea = sea_state(record.elevation, record.dt, depth=record.depth, spread=spread)
-    return Checked(record, quality, sea)
+    waves = zero_crossing_waves(record.elevation, record.dt, start=record.start)
+    return Checked(record, quality, sea, wave_statistics(waves, sea.hs))
 
 
 def _measured_part(record: Record) -> Record:
@@ -311,8 +316,7 @@ def score(
     base = _unanswered(checked, fitted, scene, domain, target, caveats, shift)
     if domain.status == "outside":
         return base
-    ahead = look_ahead(record, [distance], spread=spread)
-    return _answered(base, fitted, Scene(ahead, 0, scene.edges), shift)
+    return _answered(base, fitted, Scene(run_ahead(first), 0, scene.edges), shift)
 
 
 def _asked(ratio, height, crest_ratio) -> tuple[str, float]:

@@ -9,7 +9,7 @@ times are ISO 8601 UTC to the millisecond where the record has calendar time, el
 record's own clock.
 
 >>> report = QualityReport("pass", ())
->>> document = check_document(Record([0.0, 1.0], dt=0.5), report, None, program_version="0")
+>>> document = check_document(Record([0.0, 1.0], dt=0.5), report, None, None, program_version="0")
 >>> document["record"]["dt_s"], document["record"]["depth_m"], document["quality"]["verdict"]
 (0.5, None, 'pass')
 """
@@ -34,6 +34,7 @@ from forecaster.datatypes import (
     QualityReport,
     Record,
     SeaState,
+    WaveStatistics,
 )
 from forecaster.errors import NumericsError
 
@@ -204,6 +205,28 @@ SEA_STATE = _object(
     ("bfi_depth", "bfi_depth", NUMBER, "Benjamin-Feir index, finite depth"),
     ("kp_rad_per_m", "kp", POSITIVE, "wavenumber at the peak [rad/m]"),
     ("hs_error", "hs_error", POSITIVE, "relative standard sampling error of Hs"),
+)
+
+WAVES = _object(
+    ("count", "count", COUNT, "complete zero-down-crossing waves"),
+    ("highest_m", "highest", POSITIVE, "largest height [m]"),
+    ("highest_over_hs", "highest_ratio", POSITIVE, "the same over Hs"),
+    ("highest_time", "highest_time", _or_null(TIME), "of its crest; null: no complete wave"),
+    ("highest_crest_m", "highest_crest", POSITIVE, "largest crest above the mean level [m]"),
+    ("highest_crest_over_hs", "crest_ratio", POSITIVE, "the same over Hs"),
+    (
+        "expected_highest_over_hs",
+        "expected_ratio",
+        POSITIVE,
+        "mean largest height of records of so many waves, over Hs (Forristall 1978)",
+    ),
+    ("mean_run_waves", "run_length", POSITIVE, "successive waves of Hs or more; 0: none"),
+    (
+        "mean_total_run_waves",
+        "total_run",
+        _or_null(POSITIVE),
+        "waves from the begin of one such run to the next; null: fewer than two runs",
+    ),
 )
 
 TARGET = _object(
@@ -435,17 +458,20 @@ def check_document(
     record: Record,
     quality: QualityReport,
     sea_state: SeaState | None,
+    waves: WaveStatistics | None,
     scattering=None,
     *,
     program_version: str,
 ) -> dict[str, Any]:
-    """Quality and sea state of a record as a document of schema ``trikymia.check/1``.
+    """Quality, sea state and waves of a record as a document of schema ``trikymia.check/1``.
 
     Parameters
     ----------
     record : Record
     quality : QualityReport
     sea_state : SeaState or None
+    waves : WaveStatistics or None
+        Null, as `sea_state`, where the record failed its quality tests.
     scattering : ScatteringSpectrum or None
         Null in the document where it was not asked for or could not be given.
     program_version : str
@@ -455,6 +481,7 @@ def check_document(
         "record": RECORD.write(record, record.calendar),
         "quality": QUALITY.write(quality, record.calendar),
         "sea_state": _or_null(SEA_STATE).write(sea_state, record.calendar),
+        "waves": _or_null(WAVES).write(waves, record.calendar),
         "scattering": _or_null(SCATTERING).write(scattering, record.calendar),
         "program": {"version": program_version},
     }

@@ -19,6 +19,7 @@ from forecaster.datatypes import (
     QualityReport,
     Record,
     SeaState,
+    WaveStatistics,
 )
 from forecaster.serialize import utc_text
 from forecaster.waves.scattering_spectrum import LocatedEigenvalue, ScatteringSpectrum
@@ -187,9 +188,10 @@ def check_text(
     record: Record,
     quality: QualityReport,
     sea_state: SeaState | None,
+    waves: WaveStatistics | None,
     scattering: ScatteringSpectrum | None = None,
 ) -> str:
-    """Quality and sea state of a record as plain ASCII text, ending with a line break.
+    """Quality, sea state and waves of a record as plain ASCII text, ending with a line break.
 
     The scattering spectrum follows where it is given.
     """
@@ -203,6 +205,8 @@ def check_text(
     if sea_state is not None:
         facts.append(("Sea", _sea_line(sea_state)))
         facts.append(("Shape", _shape_line(sea_state)))
+    if waves is not None:
+        facts.append(("Waves", _waves_line(waves, record)))
     facts += [("Assumed", text) for text in record.warnings]
     parts.append(_rows(facts))
     width = max(len(test.name) for test in quality.tests) if quality.tests else 0
@@ -222,7 +226,7 @@ def _scattering_parts(spectrum: ScatteringSpectrum, record: Record) -> list[list
     """Paragraphs: what it is, the largest eigenvalues, groups and energy, how far it holds."""
     found, periodic = spectrum.eigenvalues, spectrum.periodic
     head = _wrapped(
-        f"SCATTERING SPECTRUM: {len(found)} eigenvalues. Each stands for a wave group that would "
+        f"SCATTERING SPECTRUM: {_counted(len(found), 'eigenvalue')}. Each stands for a wave group that would "
         "keep its height and speed (an envelope soliton), were it alone on the water."
     )
     table = [
@@ -242,12 +246,16 @@ def _scattering_parts(spectrum: ScatteringSpectrum, record: Record) -> list[list
         ),
         (
             "Repeated",
-            f"the record taken as periodic has {periodic.unstable_modes} unstable modes, "
+            f"the record taken as periodic has {_counted(periodic.unstable_modes, 'unstable mode')}, "
             f"{periodic.open_bands} with an open band, the widest {periodic.widest_band:.2g} Hs",
         ),
     ]
     remarks = ["How far this holds:", *_bullets(spectrum.remarks)]
     return [head, table if found else [], _rows(facts), remarks]
+
+
+def _counted(number: int, noun: str) -> str:
+    return f"{number or 'no'} {noun}{'s' * (number != 1)}"
 
 
 def _whole_percent(share: float) -> str:
@@ -269,7 +277,7 @@ def _recorded_groups(spectrum: ScatteringSpectrum, record: Record) -> str:
     highest = sorted(groups, key=lambda group: -group.height)[:LARGEST_GROUPS]
     told = "; ".join(
         f"{_metres(group.height)} at {_clock(group.peak_time, record)} "
-        f"with {len(group.eigenvalues) or 'no'} eigenvalue{'s' * (len(group.eigenvalues) != 1)}"
+        f"with {_counted(len(group.eigenvalues), 'eigenvalue')}"
         for group in sorted(highest, key=lambda group: group.peak_time)
     )
     return f"{len(groups)}, the highest by their envelope: {told}" if told else "none"
@@ -714,6 +722,22 @@ def _shape_line(sea: SeaState) -> str:
         f"Tm01 {sea.tm01:.3g} s, Tm02 {sea.tm02:.3g} s, spectral width {sea.bandwidth:.2g}, "
         f"peakedness Qp {sea.qp:.2g}"
         + ("" if isinf(sea.kph) else f", kp h {sea.kph:.2g}, BFI at this depth {sea.bfi_depth:.2g}")
+    )
+
+
+def _waves_line(waves: WaveStatistics, record: Record) -> str:
+    if not waves.count:
+        return "none that is complete"
+    if not waves.run_length:
+        runs = "no wave reaches Hs"
+    else:
+        every = "once" if isinf(waves.total_run) else f"every {waves.total_run:.1f} waves"
+        runs = f"waves of Hs or more come {waves.run_length:.1f} at a time, {every}"
+    return (
+        f"{waves.count}, the highest {_metres(waves.highest)} at "
+        f"{_clock(waves.highest_time, record)} ({waves.highest_ratio:.2f} Hs; a record of so many "
+        f"has {waves.expected_ratio:.2f} Hs in the mean), highest crest "
+        f"{_metres(waves.highest_crest)} ({waves.crest_ratio:.2f} Hs); {runs}"
     )
 
 

@@ -210,10 +210,13 @@ def test_check_reads_a_file_and_answers_in_words_and_as_a_document(sea_file, cap
     out = capsys.readouterr().out
     # by hand: the elevation has unit standard deviation, so Hs = 4 m
     assert out.startswith("QUALITY: ") and re.search(r"Hs (3\.9|4\.[01]) m", out)
+    assert re.search(r"^Waves +\d+, the highest \d\.\d m at ", out, re.M)
     assert cli.main(["check", str(sea_file), "--json", "--depth", "40"]) == 0
     document = json.loads(capsys.readouterr().out)
     assert document["record"]["depth_m"] == 40.0
     assert document["sea_state"]["hs_m"] == pytest.approx(4.0, rel=0.03)
+    waves = document["waves"]
+    assert waves["highest_m"] == pytest.approx(waves["highest_over_hs"] * 4.0, rel=0.03)
 
 
 def test_check_tells_and_draws_the_scattering_spectrum_when_asked(sea_file, capsys, tmp_path):

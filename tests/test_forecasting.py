@@ -1,6 +1,7 @@
 import json
 import warnings
 from dataclasses import replace
+from itertools import pairwise
 from math import inf, nan
 
 import numpy as np
@@ -23,6 +24,7 @@ from forecaster.forecasting import (
     scattering,
     score,
 )
+from forecaster.learning import features
 from forecaster.learning.events import interval_edges
 from forecaster.learning.features import Scene, look_ahead
 from forecaster.learning.model import CRITERIA
@@ -33,6 +35,7 @@ from forecaster.waves.heights import (
     largest_exceedance,
     zero_crossing_waves,
 )
+from forecaster.waves.spectrum import estimate_spectrum
 from tests import tiny_model
 
 DT = 0.5
@@ -645,7 +648,40 @@ def test_check_needs_no_model(sea):
     assert done.quality.verdict == "pass"
     assert done.sea_state.hs == pytest.approx(4 * sea.elevation.std(), rel=0.01)
     assert (done.sea_state.spread, done.sea_state.depth) == (7.0, 300.0)
-    assert check(Record(np.zeros(900), DT)).sea_state is None
+    failed = check(Record(np.zeros(900), DT))
+    assert failed.sea_state is None and failed.waves is None
+
+
+def test_check_counts_the_waves_of_the_record(sea):
+    # independent code: waves cut at the samples below the mean level that follow one above it
+    done = check(sea)
+    x, t = done.record.elevation, done.record.times
+    down = np.flatnonzero((x[:-1] > 0) & (x[1:] <= 0)) + 1
+    spans = [x[a:b] for a, b in pairwise(down)]
+    heights = np.array([span.max() - span.min() for span in spans])
+    assert done.waves.count == heights.size
+    # at 20 samples a wave the largest sample is at most 1.5 % below the vertex
+    assert done.waves.highest == pytest.approx(heights.max(), rel=0.02)
+    assert done.waves.highest_ratio == done.waves.highest / done.sea_state.hs
+    assert done.waves.highest_crest == pytest.approx(x.max(), rel=0.02)
+    first = down[heights.argmax()]
+    crest = t[first + spans[heights.argmax()].argmax()]
+    assert done.waves.highest_time == pytest.approx(crest, abs=DT)
+    # a record on another clock: the same waves, its own time
+    later = check(replace(sea, start=sea.start + 5000.0)).waves
+    assert later.highest_time == pytest.approx(done.waves.highest_time + 5000.0)
+
+
+def test_a_score_estimates_the_spectrum_of_its_record_once(ask, monkeypatch):
+    called = []
+
+    def counted(*arguments):
+        called.append(arguments)
+        return estimate_spectrum(*arguments)
+
+    monkeypatch.setattr(features, "estimate_spectrum", counted)
+    assert ask().answered
+    assert len(called) == 1
 
 
 # --- scattering spectrum of a checked record ---

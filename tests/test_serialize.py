@@ -12,7 +12,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from forecaster import serialize
-from forecaster.datatypes import GroupForecast, IntervalForecast
+from forecaster.datatypes import GroupForecast, IntervalForecast, WaveStatistics
 from forecaster.errors import NumericsError
 from forecaster.waves.scattering_spectrum import scattering_spectrum
 from tests.hand_built import BAD, GOOD, SEA, forecast, record, unanswered
@@ -35,6 +35,10 @@ CONTRACT = {
     "model": "name version sha256",
     "program": "version",
 }
+WAVES = WaveStatistics(
+    count=210, highest=6.3, highest_ratio=1.5, highest_time=1700.25, highest_crest=3.5,
+    crest_ratio=0.83, expected_ratio=1.56, run_length=1.4, total_run=9.2,
+)  # fmt: skip
 ANSWERS = {
     "answered": forecast(),
     "own clock": forecast(calendar=False),
@@ -181,20 +185,49 @@ def test_the_same_forecast_gives_the_same_bytes_on_one_line():
 
 
 def test_check_document():
-    document = serialize.check_document(record(), GOOD, SEA, program_version="0.1.0")
-    assert list(document) == ["schema", "record", "quality", "sea_state", "scattering", "program"]
+    document = serialize.check_document(record(), GOOD, SEA, WAVES, program_version="0.1.0")
+    assert list(document) == "schema record quality sea_state waves scattering program".split()
     assert document["scattering"] is None  # not asked for
     assert document["schema"] == "trikymia.check/1"
     assert document["quality"]["tests"][1]["name"] == "spike"
     assert document["sea_state"]["hs_m"] == 4.2
-    assert serialize.check_document(record(), BAD, None, program_version="")["sea_state"] is None
+    failed = serialize.check_document(record(), BAD, None, None, program_version="")
+    assert failed["sea_state"] is None and failed["waves"] is None
+
+
+@pytest.mark.parametrize("calendar", [True, False])
+def test_check_document_holds_the_waves(calendar):
+    made = record(calendar=calendar)
+    waves = replace(WAVES, highest_time=made.start + 3.25)
+
+    def written(waves):
+        document = serialize.check_document(made, GOOD, SEA, waves, program_version="0")
+        assert problems(document["waves"], serialize.WAVES.schema) == []
+        return json.loads(serialize.dumps(document))["waves"]
+
+    start = serialize.utc_text(made.start + 3.25) if calendar else 3.75  # the first sample at 0.5 s
+    # by hand
+    assert written(waves) == {
+        "count": 210,
+        "highest_m": 6.3,
+        "highest_over_hs": 1.5,
+        "highest_time": start,
+        "highest_crest_m": 3.5,
+        "highest_crest_over_hs": 0.83,
+        "expected_highest_over_hs": 1.56,
+        "mean_run_waves": 1.4,
+        "mean_total_run_waves": 9.2,
+    }
+    lone = written(replace(waves, highest_time=nan, total_run=inf))
+    assert lone["highest_time"] is None and lone["mean_total_run_waves"] is None
+    assert problems({**lone, "highest_m": None}, serialize.WAVES.schema)
 
 
 @pytest.mark.parametrize("calendar", [True, False])
 def test_check_document_holds_the_scattering_spectrum(calendar):
     made = record(calendar=calendar)
     spectrum = scattering_spectrum(made, SEA)
-    document = serialize.check_document(made, GOOD, SEA, spectrum, program_version="0")
+    document = serialize.check_document(made, GOOD, SEA, WAVES, spectrum, program_version="0")
     written = json.loads(serialize.dumps(document))["scattering"]
     assert problems(written, serialize.SCATTERING.schema) == []
     first, found = written["eigenvalues"][0], spectrum.eigenvalues[0]

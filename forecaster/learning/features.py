@@ -229,7 +229,7 @@ def scattering_content(record: Record, sea: SeaState) -> Content:
 
 
 def first_look(record: Record, distances, *, spread: float | None = None) -> FirstLook:
-    """Sea state and spectrum of one record; options and errors as of `look_ahead`."""
+    """Sea state and spectrum of one record; parameters and errors as of `look_ahead`."""
     return FirstLook(
         record,
         sea_state(record.elevation, record.dt, depth=record.depth, spread=spread),
@@ -256,7 +256,22 @@ def look_ahead(record: Record, distances, *, spread: float | None = None) -> Loo
     NumericsError
         If a forward run fails.
     """
-    first = first_look(record, distances, spread=spread)
+    return run_ahead(first_look(record, distances, spread=spread))
+
+
+def run_ahead(first: FirstLook) -> LookAhead:
+    """A first look carried on: envelope, forward runs and scattering spectrum.
+
+    Parameters
+    ----------
+    first : FirstLook
+
+    Raises
+    ------
+    InputError, NumericsError
+        As `look_ahead`.
+    """
+    record = first.record
     envelope = run_envelope(record, first.sea, float(first.distances[-1]))
     run = ForwardRun(envelope)
     full = run.march(first.distances)

@@ -29,31 +29,25 @@ _NEWTON_TOLERANCE = 1e-10  # on the step, in standard deviations of the logit
 
 def _checked(p, y, weights):
     """Probabilities, outcomes and weights of the rows of positive weight, or InputError."""
-    p = np.asarray(p, float)
+    p, y = np.asarray(p, float), np.asarray(y, float)
     if p.size and not (p.min() >= 0 and p.max() <= 1):  # NaN fails both
         raise InputError(
             f"probabilities must lie in 0..1, got values from {p.min()!r} to {p.max()!r}"
         )
-    return _checked_rows(p, y, weights)
-
-
-def _checked_rows(x, y, weights):
-    """Forecasts of any kind, outcomes and weights of the rows of positive weight."""
-    y = np.asarray(y, float)
-    if x.ndim != 1 or x.size == 0 or x.shape != y.shape:
+    if p.ndim != 1 or p.size == 0 or p.shape != y.shape:
         raise InputError(
             "forecasts and outcomes must be rows of one length, not empty, got shapes "
-            f"{x.shape} and {y.shape}"
+            f"{p.shape} and {y.shape}"
         )
     if not ((y == 0) | (y == 1)).all():
         raise InputError(f"outcomes must be 0 or 1, got {y[(y != 0) & (y != 1)][0]!r}")
     if weights is None:
-        return x, y, np.ones(x.size)
-    weights = _checked_weights(weights, x.shape)
+        return p, y, np.ones(p.size)
+    weights = _checked_weights(weights, p.shape)
     if weights.min() == 0:
         keep = weights > 0
-        return x[keep], y[keep], weights[keep]
-    return x, y, weights
+        return p[keep], y[keep], weights[keep]
+    return p, y, weights
 
 
 def _checked_weights(weights, shape):
@@ -195,49 +189,6 @@ def mean_bias(p, y, *, weights=None) -> float:
 
 
 # --- decompositions ---
-
-
-class BrierParts(NamedTuple):
-    """Brier score = reliability - resolution + uncertainty."""
-
-    brier: float
-    reliability: float
-    resolution: float
-    uncertainty: float
-
-
-def brier_decomposition(p, y, *, weights=None) -> BrierParts:
-    """Reliability, resolution and uncertainty, stratified on each issued value.
-
-    Raises
-    ------
-    InputError
-        As `brier_score`.
-
-    Notes
-    -----
-    With W_k the weight and r_k the share of events of the issued value p_k, and r that of all:
-    REL = sum W_k (p_k - r_k)^2 / W, RES = sum W_k (r_k - r)^2 / W, UNC = r (1 - r); exactly
-    BS = REL - RES + UNC.  Meaningful when few distinct values are issued; when nearly every row
-    has its own value REL tends to BS: use `isotonic_decomposition`.
-
-    Source: Murphy (1973), J. Appl. Meteorol. 12, 595-600.
-
-    Examples
-    --------
-    >>> brier_decomposition([0.25, 0.25, 0.75, 0.75], [0, 1, 1, 1])
-    BrierParts(brier=0.1875, reliability=0.0625, resolution=0.0625, uncertainty=0.1875)
-    """
-    p, y, weights = _checked(p, y, weights)
-    values, weight, events = _strata(p, y, weights)
-    rates, total = events / weight, weight.sum()
-    rate = events.sum() / total
-    return BrierParts(
-        float(np.average((p - y) ** 2, weights=weights)),
-        float(weight @ (values - rates) ** 2 / total),
-        float(weight @ (rates - rate) ** 2 / total),
-        float(rate * (1 - rate)),
-    )
 
 
 class IsotonicParts(NamedTuple):
@@ -393,53 +344,7 @@ def calibration_line(p, y, *, weights=None) -> LogitLine:
     _base_rate(y, weights, "the calibration line")
     logit = np.log(p) - np.log1p(-p)
     _refuse_separated(logit, y)
-    # for forecasts near calibration the line as issued is a close start
-    return _logistic_fit(logit, y, weights, start=LogitLine(0.0, 1.0))
-
-
-def fit_platt(logit, y, *, smoothing: bool = True, weights=None) -> LogitLine:
-    """Intercept and slope that turn raw logits into calibrated ones.
-
-    Parameters
-    ----------
-    logit : (n,) array_like
-        Raw scores, any finite numbers.
-    y, weights
-        As everywhere in this module.
-    smoothing : bool
-        Fit to (N+ + 1)/(N+ + 2) for an event and 1/(N- + 2) for a non-event instead of 1 and 0,
-        with N+ and N- their (weighted) numbers; the fit then exists for separated outcomes too.
-
-    Raises
-    ------
-    InputError
-        For logits that are not finite, outcomes other than 0 and 1, or unequal lengths.
-    NumericsError
-        Without an event or a non-event, when all logits are equal, or, without smoothing, when
-        the outcomes are separated.
-
-    Notes
-    -----
-    Source: Platt (1999), in Advances in Large Margin Classifiers, 61-74.
-
-    Examples
-    --------
-    >>> line = fit_platt([-1.0, 1.0], [0, 1])
-    >>> round(line.slope, 6)  # both targets are 2/3 from the other end: logit(2/3) = ln 2
-    0.693147
-    """
-    logit = np.asarray(logit, float)
-    if not np.isfinite(logit).all():
-        raise InputError("logits must be finite numbers")
-    logit, y, weights = _checked_rows(logit, y, weights)
-    _base_rate(y, weights, "the fit")
-    if not smoothing:
-        _refuse_separated(logit, y)
-        return _logistic_fit(logit, y, weights)
-    events = float(weights @ y)
-    others = float(weights.sum()) - events
-    target = np.where(y == 1, (events + 1) / (events + 2), 1 / (others + 2))
-    return _logistic_fit(logit, target, weights)
+    return _logistic_fit(logit, y, weights)
 
 
 def _refuse_separated(logit, y) -> None:
@@ -457,18 +362,15 @@ def _refuse_separated(logit, y) -> None:
         )
 
 
-def _logistic_fit(x, target, weights, *, start: LogitLine | None = None) -> LogitLine:
-    """Maximum-likelihood logistic line of `target` (0..1) on `x`, by damped Newton steps.
-
-    Starts from `start` or from the flat line at the mean target, whichever is more likely.
-    """
+def _logistic_fit(logit, y, weights) -> LogitLine:
+    """Maximum-likelihood line of the outcomes on `logit`, by damped Newton steps."""
     total = weights.sum()
-    centre = weights @ x / total
-    scale = np.sqrt(weights @ (x - centre) ** 2 / total)
+    centre = weights @ logit / total
+    scale = np.sqrt(weights @ (logit - centre) ** 2 / total)
     if not scale > 1e-9 * max(1.0, abs(centre)):
         raise NumericsError(f"all forecasts have the same logit {centre:.6g}, so no slope fits")
-    z = (x - centre) / scale
-    events, moment = weights @ target, weights @ (target * z)
+    z = (logit - centre) / scale
+    events, moment = weights @ y, weights @ (y * z)
 
     def evaluate(a, b):
         eta = a + b * z
@@ -476,13 +378,12 @@ def _logistic_fit(x, target, weights, *, start: LogitLine | None = None) -> Logi
         softplus = np.maximum(eta, 0) + np.log1p(decay)
         return weights @ softplus - a * events - b * moment, a, b, eta, decay
 
-    state = evaluate(np.log(events / (total - events)), 0.0)
-    if start is not None:
-        issued = evaluate(start.intercept + start.slope * centre, start.slope * scale)
-        state = min(state, issued, key=lambda trial: trial[0])
+    flat = evaluate(np.log(events / (total - events)), 0.0)
+    issued = evaluate(centre, scale)  # intercept 0, slope 1: close if near calibration
+    state = min(flat, issued, key=lambda trial: trial[0])
     for _ in range(_MAX_NEWTON_STEPS):
         loss, a, b, eta, decay = state
-        residual = weights * (target - np.where(eta >= 0, 1, decay) / (1 + decay))
+        residual = weights * (y - np.where(eta >= 0, 1, decay) / (1 + decay))
         curvature = weights * decay / (1 + decay) ** 2
         curved = curvature * z
         h00, h01, h11 = curvature.sum(), curved.sum(), curved @ z

@@ -354,7 +354,7 @@ def value_range(record: Record) -> QualityTest:
     return QualityTest(
         "range", flag, measured, int(beyond.sum()),
         f"{beyond.sum()} value(s) beyond {RANGE:g} m, the first {level[where]:.5g} m at "
-        f"{_place(record, where)}: check the unit (unit), or declare the fill value (fill_value)",
+        f"{_place(record, where)}: check the unit, or declare the fill value",
     )  # fmt: skip
 
 
@@ -449,7 +449,7 @@ def bulk_range(record: Record) -> QualityTest:
     return QualityTest(
         "bulk_range", flag, 1, int(flag == "fail"),
         f"Hs about {hs:.4g} m, plausible up to {LARGEST_HS:g} m"
-        + ("" if flag == "pass" else ": check the unit of the elevation (unit)"),
+        + ("" if flag == "pass" else ": check the unit of the elevation"),
     )  # fmt: skip
 
 
@@ -466,10 +466,10 @@ def steepness(record: Record) -> QualityTest:
     value = (2 * np.pi / scales.tp) ** 2 / GRAVITY * scales.hs / 2
     if value > STEEP:
         flag = "fail" if value > STEEPEST else "suspect"
-        remedy = ": too steep; was another unit (mm, cm, ft) read as metres? give it as unit"
+        remedy = ": too steep; was another unit (mm, cm, ft) read as metres? give the true unit"
     elif value < FLAT:
         flag = "fail" if value < FLATTEST else "suspect"
-        remedy = ": too flat; were metres read as mm or cm? give the true unit as unit"
+        remedy = ": too flat; were metres read as mm or cm? give the true unit"
     else:
         flag, remedy = "pass", ""
     return QualityTest(

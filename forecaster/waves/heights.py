@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from forecaster.datatypes import Waves
+from forecaster.datatypes import Waves, WaveStatistics
 from forecaster.errors import InputError
 from forecaster.waves.linear import GRAVITY, wavenumber
 
@@ -478,6 +478,55 @@ def expected_largest(n_waves, *, exceedance=rayleigh_height_exceedance):
     ratio = (panels[:-1, None] + half * (1 + nodes)).ravel()
     n_waves = np.asarray(n_waves, float)[..., None]
     return largest_exceedance(exceedance(ratio), n_waves) @ (half * weights).ravel()
+
+
+def wave_statistics(waves, hs) -> WaveStatistics:
+    """Number, largest and runs of the waves of a record, beside what is to be expected.
+
+    Parameters
+    ----------
+    waves : Waves
+    hs : float [m]
+        Of the record; runs are of waves that reach it.
+
+    Returns
+    -------
+    WaveStatistics
+
+    Raises
+    ------
+    InputError
+        Unless `hs` is positive.
+
+    Notes
+    -----
+    The expected largest is that of independent waves of Forristall (1978), by
+    `expected_largest`.  A single record scatters about it, with a standard deviation of 13 % of it
+    for 50 waves and of 9 % for 500.
+
+    Examples
+    --------
+    >>> t = np.arange(6.0)
+    >>> found = wave_statistics(Waves(t, t + 1, t + 0.7, *np.array([[1, 5, 6, 1, 7, 2]] * 3)), 4.0)
+    >>> found.count, found.highest_ratio, found.highest_time, found.run_length, found.total_run
+    (6, 1.75, 4.7, 1.5, 3.0)
+    """
+    if not (np.isfinite(hs) and hs > 0):
+        raise InputError(f"hs must be a positive number of metres, got {hs!r}")
+    count = waves.height.size
+    highest, crest = (float(of.max(initial=0.0)) for of in (waves.height, waves.crest))
+    run_length, total_run = group_statistics(waves, hs)
+    return WaveStatistics(
+        count=count,
+        highest=highest,
+        highest_ratio=highest / hs,
+        highest_time=float(waves.crest_time[waves.height.argmax()]) if count else np.nan,
+        highest_crest=crest,
+        crest_ratio=crest / hs,
+        expected_ratio=float(expected_largest(count, exceedance=forristall_height_exceedance)),
+        run_length=run_length,
+        total_run=total_run,
+    )
 
 
 def rayleigh_largest_quantile(probability, n_waves):

@@ -17,11 +17,9 @@ from forecaster.errors import InputError, NumericsError
 from forecaster.learning.scores import (
     bootstrap_by_group,
     bootstrap_difference,
-    brier_decomposition,
     brier_score,
     brier_skill,
     calibration_line,
-    fit_platt,
     isotonic_decomposition,
     log_skill,
     logarithmic_score,
@@ -35,7 +33,6 @@ from forecaster.learning.scores import (
 SCORES = (
     brier_score,
     brier_skill,
-    brier_decomposition,
     isotonic_decomposition,
     logarithmic_score,
     log_skill,
@@ -48,7 +45,7 @@ NEED_BOTH_OUTCOMES = (brier_skill, log_skill, calibration_line, roc_area, precis
 
 
 def stratified():
-    """Table (p, rows, events) used for the Murphy decomposition."""
+    """Forecasts of few issued values, from a table (p, rows, events)."""
     table = [(0.0, 50, 1), (0.1, 30, 4), (0.3, 20, 5), (0.6, 10, 7), (0.9, 10, 9)]
     p = np.concatenate([np.full(n, p) for p, n, _ in table])
     y = np.concatenate([np.arange(n) < events for _, n, events in table]).astype(int)
@@ -117,9 +114,10 @@ def test_brier_score_of_a_worked_example():
     assert brier_score([0.1, 0.9, 0.8, 0.3], [0, 1, 1, 0]) == pytest.approx(0.0375, abs=1e-12)
 
 
-def test_murphy_decomposition_of_a_table():
-    # exact: Murphy 1973 applied to a table made for this test, worked outside the program
-    parts = brier_decomposition(*stratified())
+def test_decomposition_of_a_table():
+    # exact: Murphy 1973 applied to a table made for this test, worked outside the program; the
+    # shares of events grow with the issued values, so that no pooling changes its parts
+    parts = isotonic_decomposition(*stratified())
     expected = (0.095, 0.00169444, 0.07641667, 0.16972222)
     assert parts == pytest.approx(expected, abs=1e-8)
     assert brier_skill(*stratified()) == pytest.approx(0.44026, abs=1e-5)
@@ -134,25 +132,24 @@ def test_murphy_decomposition_of_a_table():
         )
     )
 )
-def test_decompositions_add_up(rows):
-    # exact: Murphy 1973; Dimitriadis, Gneiting & Jordan 2021
+def test_decomposition_adds_up(rows):
+    # exact: Dimitriadis, Gneiting & Jordan 2021
     p, y, weights = rows
-    murphy = brier_decomposition(p, y, weights=weights)
-    isotonic = isotonic_decomposition(p, y, weights=weights)
-    brier = np.average((p - y) ** 2, weights=weights)
-    for score, minus, plus, uncertainty in (murphy, isotonic):
-        assert score == pytest.approx(brier, abs=1e-12)
-        assert minus - plus + uncertainty == pytest.approx(brier, abs=1e-12)
-        assert min(minus, plus) >= -1e-12
-    # recalibration that may be any function of p does at least as well as a monotone one
-    assert murphy.reliability >= isotonic.miscalibration - 1e-12
+    score, minus, plus, uncertainty = isotonic_decomposition(p, y, weights=weights)
+    assert score == pytest.approx(np.average((p - y) ** 2, weights=weights), abs=1e-12)
+    assert minus - plus + uncertainty == pytest.approx(score, abs=1e-12)
+    assert min(minus, plus) >= -1e-12
+    # recalibration that may be any function of p does at least as well as a monotone one: exact,
+    # by the reliability of Murphy 1973
+    _, index = np.unique(p, return_inverse=True)
+    rates = np.bincount(index, weights * y) / np.bincount(index, weights)
+    assert np.average((p - rates[index]) ** 2, weights=weights) >= minus - 1e-12
 
 
 def test_climatology_has_no_skill_and_only_uncertainty():
     # exact: base rate 0.033 gives UNC = 0.033 x 0.967 = 0.031911
     y = np.arange(1000) < 33
     p = np.full(1000, 0.033)
-    assert brier_decomposition(p, y) == pytest.approx((0.031911, 0, 0, 0.031911), abs=1e-12)
     assert isotonic_decomposition(p, y) == pytest.approx((0.031911, 0, 0, 0.031911), abs=1e-12)
     assert brier_skill(p, y) == pytest.approx(0, abs=1e-12)
     assert log_skill(p, y) == pytest.approx(0, abs=1e-12)
@@ -300,45 +297,6 @@ def test_calibration_line_settles_from_forecasts_far_off():
     intercept, slope = calibration_line(p, y)
     assert intercept + slope * logit[0] == pytest.approx(-log(3), abs=1e-9)
     assert intercept + slope * logit[-1] == pytest.approx(log(3), abs=1e-9)
-
-
-# --- Platt ---
-
-
-def test_platt_targets_are_smoothed():
-    # exact: targets (N+ + 1)/(N+ + 2) and 1/(N- + 2) (Platt 1999); with two values of the logit
-    # the line runs through both targets: N+ = 3 -> 4/5, N- = 2 -> 1/4
-    line = fit_platt([-1, -1, 2, 2, 2], [0, 0, 1, 1, 1])
-    low, high = log(0.25 / 0.75), log(0.8 / 0.2)
-    assert line.slope == pytest.approx((high - low) / 3, abs=1e-9)
-    assert line.intercept == pytest.approx(low + (high - low) / 3, abs=1e-9)
-
-
-def test_platt_without_smoothing_is_the_calibration_line():
-    p, y = sample(slope=0.6)
-    logit = np.log(p) - np.log1p(-p)
-    assert fit_platt(logit, y, smoothing=False) == pytest.approx(calibration_line(p, y), abs=1e-8)
-
-
-def test_platt_counts_weights_and_takes_any_scale():
-    logit, y = np.array([-3.0, 1.0, 0.5, 4.0]), np.array([0, 0, 1, 1])
-    weights = [2, 1, 3, 1]
-    line = fit_platt(logit, y, weights=weights)
-    assert line == pytest.approx(fit_platt(np.repeat(logit, weights), np.repeat(y, weights)))
-    # exact: the same fit in other units of the logit
-    intercept, slope = fit_platt(1e3 * logit, y, weights=weights)
-    assert (intercept, 1e3 * slope) == pytest.approx(line)
-
-
-def test_platt_refuses_what_it_cannot_fit():
-    with pytest.raises(InputError, match="finite"):
-        fit_platt([0, inf], [0, 1])
-    with pytest.raises(InputError, match="one length"):
-        fit_platt([0, 1], [0, 1, 1])
-    with pytest.raises(NumericsError, match="non-event"):
-        fit_platt([0, 1], [1, 1])
-    with pytest.raises(NumericsError, match="separate"):
-        fit_platt([0, 1], [0, 1], smoothing=False)
 
 
 # --- reliability ---

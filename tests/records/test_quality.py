@@ -219,13 +219,13 @@ def test_wrong_units_fail_with_the_remedy():
     millimetres = Record(1000 * x, dt=0.5)
     assert check_quality(millimetres).verdict == "fail"
     assert flags(millimetres)["steepness"] == "fail"
-    assert "was another unit (mm, cm, ft) read as metres? give it as unit" in detail(
+    assert "was another unit (mm, cm, ft) read as metres? give the true unit" in detail(
         millimetres, "steepness"
     )
     assert flags(millimetres)["acceleration"] == flags(millimetres)["range"] == "fail"
     small = Record(x / 1000, dt=0.5)
     assert flags(small)["steepness"] == "fail"
-    assert "give the true unit" in detail(small, "steepness")
+    assert "were metres read as mm or cm? give the true unit" in detail(small, "steepness")
     hinted = check_quality(millimetres, unit_hint="m").tests
     assert all(
         t.detail.endswith("(it was read as m)")
@@ -240,7 +240,7 @@ def test_undeclared_fill_values_fail_with_the_remedy():
     record = Record(x, dt=0.5)
     assert flags(record)["range"] == "fail"
     assert "30 value(s) beyond 40 m, the first 9999 m at 250 s" in detail(record, "range")
-    assert "declare the fill value (fill_value)" in detail(record, "range")
+    assert "declare the fill value" in detail(record, "range")
     x[500:530] = 0.1
     x[500] = 9999.0  # one alone is a spike, and goes
     assert flags(Record(x, dt=0.5))["range"] == "suspect"
