@@ -226,8 +226,8 @@ def _scattering_parts(spectrum: ScatteringSpectrum, record: Record) -> list[list
     """Paragraphs: what it is, the largest eigenvalues, groups and energy, how far it holds."""
     found, periodic = spectrum.eigenvalues, spectrum.periodic
     head = _wrapped(
-        f"SCATTERING SPECTRUM: {_counted(len(found), 'eigenvalue')}. Each stands for a wave group that would "
-        "keep its height and speed (an envelope soliton), were it alone on the water."
+        f"SCATTERING SPECTRUM: {_counted(len(found), 'eigenvalue')}. Each stands for a wave group "
+        "that would keep its height and speed (an envelope soliton), were it alone on the water."
     )
     table = [
         "  height   over Hs   group speed, against the carrier      where in the record",
@@ -246,7 +246,8 @@ def _scattering_parts(spectrum: ScatteringSpectrum, record: Record) -> list[list
         ),
         (
             "Repeated",
-            f"the record taken as periodic has {_counted(periodic.unstable_modes, 'unstable mode')}, "
+            "the record taken as periodic has "
+            f"{_counted(periodic.unstable_modes, 'unstable mode')}, "
             f"{periodic.open_bands} with an open band, the widest {periodic.widest_band:.2g} Hs",
         ),
     ]

@@ -314,7 +314,7 @@ def test_check_text_of_a_record_without_eigenvalues():
     made = record()
     spectrum = replace(scattering_spectrum(made, SEA), eigenvalues=(), groups=())
     text = wording.check_text(made, GOOD, SEA, WAVES, spectrum)
-    assert "SCATTERING SPECTRUM: 0 eigenvalues" in text and "over Hs" not in text
+    assert "SCATTERING SPECTRUM: no eigenvalues" in text and "over Hs" not in text
     assert re.search(r"^Groups +none$", text, re.M)
 
 
