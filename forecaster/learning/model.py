@@ -72,7 +72,7 @@ class Trees:
         First node of each tree.
     feature, left, right : (nodes,) int arrays
         Column tested and the node to go to; a leaf points to itself.
-    threshold, value : (nodes,) float arrays
+    threshold, value : (nodes,) float32 arrays
         Go left where the column is <= threshold; log odds of a leaf.
     depth : int
         Most steps from a root to a leaf.
@@ -98,7 +98,7 @@ class Trees:
             for _ in range(self.depth):
                 go_left = block[rows, self.feature[node]] <= self.threshold[node]
                 node = np.where(go_left, self.left[node], self.right[node])
-            total[begin : begin + 512] += self.value[node].sum(axis=1)
+            total[begin : begin + 512] += self.value[node].sum(axis=1, dtype=float)
         return total
 
 
@@ -269,10 +269,11 @@ def head_arrays(head: Head, prefix: str) -> dict[str, np.ndarray]:
         arrays[f"{place}_shape"] = np.array([trees.base, trees.depth])
         arrays[f"{place}_roots"] = trees.roots.astype(np.int32)
         arrays[f"{place}_feature"] = trees.feature.astype(np.int16)
-        arrays[f"{place}_left"] = trees.left.astype(np.int32)
-        arrays[f"{place}_right"] = trees.right.astype(np.int32)
-        arrays[f"{place}_threshold"] = trees.threshold.astype(np.float64)
-        arrays[f"{place}_value"] = trees.value.astype(np.float64)
+        node = np.min_scalar_type(trees.feature.size)
+        arrays[f"{place}_left"] = trees.left.astype(node)
+        arrays[f"{place}_right"] = trees.right.astype(node)
+        arrays[f"{place}_threshold"] = trees.threshold.astype(np.float32)
+        arrays[f"{place}_value"] = trees.value.astype(np.float32)
     return arrays
 
 
@@ -316,10 +317,10 @@ def _trees_from_arrays(arrays, place):
     base, depth = (float(x) for x in arrays[f"{place}_shape"])
     parts = {name: arrays[f"{place}_{name}"] for name in ("roots", *_FIELDS)}
     nodes = parts["feature"].size
-    for name, kind in {"roots": "i", "feature": "i", "left": "i", "right": "i",
-                       "threshold": "f", "value": "f"}.items():  # fmt: skip
+    for name, kinds in {"roots": "iu", "feature": "iu", "left": "iu", "right": "iu",
+                        "threshold": "f", "value": "f"}.items():  # fmt: skip
         array = parts[name]
-        if array.dtype.kind != kind or array.ndim != 1 or array.size == 0:
+        if array.dtype.kind not in kinds or array.ndim != 1 or array.size == 0:
             raise ModelIntegrityError(
                 f"{place}_{name} is {array.dtype} of shape {array.shape}, not a row of numbers"
             )

@@ -26,6 +26,7 @@ from forecaster.settings import TrainSettings
 
 CALIBRATION_RATIOS = {"height": (1.0, 1.2, 1.4, 1.6, 1.8, 2.0, 2.2), "crest": (0.7, 0.9, 1.1, 1.25)}
 HORIZON_COVERAGE = 0.5
+ROUNDING = 1e-5  # in log odds, of leaves in single precision
 _BINS = 200
 _NEWTON_STEPS = 40
 _SPLIT, _BAG = range(2)  # purposes of random numbers
@@ -64,7 +65,10 @@ def draw_thresholds(dataset: Dataset, criterion: str, number: int, generator) ->
 
 
 def _flattened(booster) -> Trees:
-    """Trees of a fitted scikit-learn booster as flat arrays."""
+    """Trees of a fitted scikit-learn booster as flat arrays of single precision.
+
+    A threshold is rounded down, so that every column of single precision goes the same way.
+    """
     parts = {name: [] for name in ("feature", "left", "right", "threshold", "value")}
     roots, offset, depth = [], 0, 1
     for (predictor,) in booster._predictors:
@@ -74,8 +78,12 @@ def _flattened(booster) -> Trees:
         parts["feature"].append(np.where(leaf, 0, nodes["feature_idx"]))
         parts["left"].append(np.where(leaf, own, nodes["left"]) + offset)
         parts["right"].append(np.where(leaf, own, nodes["right"]) + offset)
-        parts["threshold"].append(np.where(leaf, np.inf, nodes["num_threshold"]))
-        parts["value"].append(np.where(leaf, nodes["value"], 0.0))
+        limit = np.where(leaf, np.inf, nodes["num_threshold"])
+        single = limit.astype(np.float32)
+        above = single > limit
+        single[above] = np.nextafter(single[above], np.float32(-np.inf))
+        parts["threshold"].append(single)
+        parts["value"].append(np.where(leaf, nodes["value"], 0.0).astype(np.float32))
         roots.append(offset)
         offset += nodes.size
         depth = max(depth, int(nodes["depth"].max()))
@@ -121,7 +129,7 @@ def _fit_bag(dataset, names, criterion, settings, bag) -> Trees:
         trees = _flattened(booster)
         probe = columns[:: max(len(columns) // 500, 1)]
         difference = np.abs(trees.log_odds(probe) - booster.decision_function(probe)).max()
-    if not difference < 1e-9:
+    if not difference < ROUNDING:
         raise NumericsError(
             f"the flattened trees differ from the fitted ones by {difference:g} in log odds",
             achieved=difference,
@@ -129,21 +137,12 @@ def _fit_bag(dataset, names, criterion, settings, bag) -> Trees:
     return trees
 
 
-def _raw_log_odds(bags, dataset, names, criterion, ratios):
-    """(rows, k) mean log odds of the bags, one threshold at a time to bound memory."""
-    used = [dataset.names.index(name) for name in names]
-    table = dataset.features[:, used]
+def _bag_log_odds(trees, table, names, criterion, ratios):
+    """(rows, k) log odds of one bag, one threshold at a time to bound memory."""
+    number = len(table)
     return np.stack(
         [
-            np.mean(
-                [
-                    trees.log_odds(
-                        threshold_columns(table, names, criterion, np.full(len(table), ratio))
-                    )
-                    for trees in bags
-                ],
-                axis=0,
-            )
+            trees.log_odds(threshold_columns(table, names, criterion, np.full(number, ratio)))
             for ratio in ratios
         ],
         axis=1,
@@ -262,7 +261,12 @@ def fit_head(
     shown = held.rows(kept)
     ratios = CALIBRATION_RATIOS[criterion]
     progress(f"{criterion}: calibration on {np.unique(held.sea).size} seas")
-    log_odds = _raw_log_odds(bags, shown, names, criterion, ratios)
+    table = shown.features[:, [shown.names.index(name) for name in names]]
+    with joblib.parallel_config(backend="loky", inner_max_num_threads=1):
+        told = joblib.Parallel(n_jobs=workers)(
+            joblib.delayed(_bag_log_odds)(trees, table, names, criterion, ratios) for trees in bags
+        )
+    log_odds = np.mean(told, axis=0)
     reached = getattr(shown, criterion)[:, None] >= np.array(ratios)
     coverage = shown.column("coverage")
     line, covariance = _calibrated_line(log_odds, coverage, reached, shown.sea)
