@@ -122,7 +122,7 @@ def test_flat_trees_equal_the_library_that_grew_them(criterion, seed):
 
 def test_a_column_equal_to_a_threshold_goes_left_in_single_precision_too():
     # by hand: thresholds between two floats of single precision decide between these two
-    fitted, columns = booster("height", 0)
+    fitted, _ = booster("height", 0)
     trees = _flattened(fitted)
     inner = np.isfinite(trees.threshold)
     exact = np.concatenate(
