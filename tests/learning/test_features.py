@@ -16,6 +16,7 @@ from forecaster.learning.features import (
     FirstLook,
     Scene,
     Track,
+    carried,
     feature_table,
     first_look,
     look_ahead,
@@ -268,6 +269,55 @@ def test_largest_envelope_of_intervals(handmade):
     assert scene.largest_envelope(track, shift=-1).tolist() == pytest.approx([0.995, 1.195])
     assert scene.largest_envelope(track, fed=True).tolist() == pytest.approx([1.195, 1.395])
     assert scene.largest_envelope(track, shift=5).tolist() == [0, 0]
+
+
+@pytest.mark.parametrize("name", ["arriving_short", "arriving_long", "arriving_short_before"])
+def test_a_regular_wave_arrives_at_its_own_height(regular, name):
+    # exact: 2|A| = 2 a and Hs = 4 a/sqrt 2, so that the envelope height is Hs/sqrt 2 throughout;
+    # the first interval lies well inside what the record feeds 4 wavelengths away (8 periods)
+    assert value(regular, name)[0] == pytest.approx(1 / np.sqrt(2), rel=0.03)
+    # long after the record's last waves nothing is on its way
+    assert value(regular, name)[-1] < 0.05
+
+
+def test_the_mean_of_what_arrives_is_what_was_recorded(random_scene):
+    # exact: without a distance energy arrives when it is there, in the mean at Hs^2/2
+    ahead, tp = random_scene.ahead, random_scene.ahead.sea.tp
+    edges = np.arange(ahead.record.start + 8 * tp, ahead.record.end - 8 * tp, 4 * tp)
+    there = Scene(ahead, 0, edges)
+    for window in ("short", "long"):
+        times, height = there.arriving_waves(window)
+        inside = (times > edges[0]) & (times < edges[-1])
+        recorded = (ahead.sensor.times > edges[0]) & (ahead.sensor.times < edges[-1])
+        square = (ahead.sensor.envelope_height[recorded] ** 2).mean() / ahead.sea.hs**2
+        assert (height[inside] ** 2).mean() == pytest.approx(square, rel=0.05)
+        assert (there.largest_arriving(window) > there.arriving_height(window) - 1e-9).mean() > 0.9
+
+
+def test_a_soliton_arrives_once_in_the_interval_of_its_speed():
+    # exact (Zakharov & Shabat 1972): a envelope soliton a sech(k a omega t/sqrt 2) has one
+    # eigenvalue and the carrier's speed; by hand: 20 periods before the end, 10 wavelengths away
+    # (20 periods of travel), hence at the issue time
+    t = DT * np.arange(N)
+    centre = t[-1] - 20 * TP
+    amplitude = 0.1 / K
+    train = amplitude / np.cosh(0.1 * (2 * np.pi / TP) * (t - centre) / np.sqrt(2))
+    record = Record(train * np.cos(2 * np.pi * (t - centre) / TP), DT)
+    scene = scene_of(record, 10 * WAVELENGTH)
+    found = value(scene, "arriving_soliton")
+    assert found[0] > 0 and (found[2:] == 0).all()
+    scale = scene.ahead.content.scale
+    assert found[0] * scale == pytest.approx(0.1 / np.sqrt(8), rel=0.05)
+
+
+def test_another_equation_is_carried_on_undamped(random_scene):
+    ahead = random_scene.ahead
+    same = carried(ahead, "dysthe-pair")
+    for ours, full in zip(same.expected, ahead.full, strict=True):
+        np.testing.assert_array_equal(ours.envelope_height, full.envelope_height)
+    other = carried(ahead, "dysthe")
+    assert not np.allclose(other.expected[1].envelope_height, ahead.full[1].envelope_height)
+    assert other.linear is ahead.linear
 
 
 def test_a_group_feeds_the_interval_that_its_energy_reaches(random_scene):
