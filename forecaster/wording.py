@@ -614,8 +614,8 @@ def _most_likely(forecast: Forecast) -> str:
 
 
 _TABLE_HEAD = (
-    "    from        to      lead   probability            base rate   times  waves    likely",
-    "                         min                                       base   known   largest",
+    "    from        to      lead   probability              base rate   times  waves    likely",
+    "                         min                                         base   known   largest",
 )
 
 
@@ -656,7 +656,7 @@ def _interval_row(item: IntervalForecast, record: Record, mark: str) -> str:
     probability = f"{percent(item.probability)}, {one_in(item.probability)}"
     return (
         f"{mark} {start:>8} {end:>9} {item.lead / 60:>8.1f}   "
-        f"{probability:<21} {base:>10} {times:>7} {100 * item.coverage:>4.0f} %  {median:>8}"
+        f"{probability:<23} {base:>10} {times:>7} {100 * item.coverage:>4.0f} %  {median:>8}"
     )
 
 
