@@ -333,8 +333,15 @@ class WaveGroup:
     eigenvalues : (m,) complex array
         Discrete Zakharov-Shabat eigenvalues of the window, largest imaginary part first, in the
         scaling q = conj(k0 A)/sqrt(2) over omega0 t.
+    soliton_share : float
+        Share of the window's energy in these.
+    chirp : float [rad/s^2]
+        Rate at which the frequency of the waves rises through the group; a group that begins
+        with its short, slow waves focuses downwave: negative.
     focus_distance : float [m]
         Distance downwave at which the group is expected to focus; NaN if it does not.
+    focus_time : float [s]
+        When its envelope maximum is expected there; NaN if it does not focus.
     amplification : float
         Expected envelope maximum there over the envelope maximum at the sensor (>= 1).
     """
@@ -344,7 +351,10 @@ class WaveGroup:
     peak_time: float
     height: float
     eigenvalues: np.ndarray
+    soliton_share: float
+    chirp: float
     focus_distance: float
+    focus_time: float
     amplification: float
 
     def __post_init__(self):

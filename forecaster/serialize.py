@@ -299,12 +299,15 @@ SCATTERING = _object(
                 ("time", "peak_time", TIME, "of its envelope maximum"),
                 ("height_m", "height", POSITIVE, "envelope height 2|A| there [m]"),
                 ("eigenvalues", "eigenvalues", _list(COMPLEX), "of the window"),
+                ("soliton_share", "soliton_share", POSITIVE, "of its energy, in these"),
+                ("chirp_rad_per_s2", "chirp", NUMBER, "rise of the frequency through the group"),
                 (
                     "focus_distance_m",
                     "focus_distance",
                     _or_null(NUMBER),
                     "downwave [m]; null: does not focus",
                 ),
+                ("focus_time", "focus_time", _or_null(TIME), "there; null: does not focus"),
                 ("amplification", "amplification", _or_null(POSITIVE), "of the envelope there"),
             )
         ),

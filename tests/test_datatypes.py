@@ -103,7 +103,7 @@ WITH_ARRAYS = [
         Waves(ROW, ROW, ROW, ROW, ROW, ROW),
         ("start", "end", "crest_time", "height", "crest", "trough"),
     ),
-    (WaveGroup(0.0, 1.0, 0.5, 2.0, [1j], nan, 1.0), ("eigenvalues",)),
+    (WaveGroup(0.0, 1.0, 0.5, 2.0, [1j], 0.9, 0.0, nan, nan, 1.0), ("eigenvalues",)),
 ]
 
 

@@ -21,7 +21,12 @@ import numpy as np
 
 from forecaster.datatypes import Envelope, WaveGroup
 from forecaster.errors import InputError, NumericsError
-from forecaster.waves.linear import GRAVITY, group_ratio, nonlinear_coefficient
+from forecaster.waves.linear import (
+    GRAVITY,
+    group_ratio,
+    group_velocity,
+    nonlinear_coefficient,
+)
 
 _PARABOLA_LIMIT = 16.0  # the parabola of the variance is not believed below 1/16 of its start
 _CACHE = 2**14  # complex numbers worked on at a time
@@ -1207,6 +1212,8 @@ class Focusing:
     ----------
     chirp : (w,) array
         d^2 phase/dT^2 of q about the main peak; negative focuses downwave.
+    speed : (w,) array
+        dT/dX of the group: twice its mean frequency offset.
     nonlinearity : (w,) array
         A tau of the sech of equal peak and width: the number of solitons it would split into.
     parabola_distance, parabola_amplification : (w,) arrays
@@ -1218,6 +1225,7 @@ class Focusing:
     """
 
     chirp: np.ndarray
+    speed: np.ndarray
     nonlinearity: np.ndarray
     parabola_distance: np.ndarray
     parabola_amplification: np.ndarray
@@ -1321,6 +1329,7 @@ def focusing(q, dt) -> Focusing:
     strong = area >= 1.5
     return Focusing(
         chirp=chirp,
+        speed=2 * frequency,
         nonlinearity=area,
         parabola_distance=parabola,
         parabola_amplification=parabola_gain,
@@ -1440,6 +1449,9 @@ def group_content(envelope: Envelope) -> tuple[WaveGroup, ...]:
     eigenvalues = _eigenvalues(levels, dt, 0.02)
     focus = focusing(levels[1], dt)
     distance = focus.distance * evolution_scale(envelope)
+    travel = distance / float(group_velocity(envelope.omega0, envelope.depth))
+    travel = travel + focus.speed * focus.distance / envelope.omega0
+    energy = (np.abs(levels[1]) ** 2).sum(axis=1) * dt
     times, height = envelope.times, 2 * np.abs(envelope.values)
     content = []
     for i, (left, right) in enumerate(groups):
@@ -1451,7 +1463,12 @@ def group_content(envelope: Envelope) -> tuple[WaveGroup, ...]:
                 peak_time=float(times[peak]),
                 height=float(height[peak]),
                 eigenvalues=eigenvalues[i],
+                soliton_share=float(4 * eigenvalues[i].imag.sum() / energy[i])
+                if energy[i]
+                else 0.0,
+                chirp=float(focus.chirp[i] * envelope.omega0**2),
                 focus_distance=float(distance[i]),
+                focus_time=float(times[peak] + travel[i]),
                 amplification=float(focus.amplification[i]),
             )
         )

@@ -12,6 +12,7 @@ from scipy.special import gamma
 from forecaster.datatypes import Envelope
 from forecaster.errors import InputError, NumericsError
 from forecaster.waves import scattering
+from forecaster.waves.envelope import free_envelope
 from forecaster.waves.linear import group_ratio, nonlinear_coefficient, wavenumber
 from forecaster.waves.scattering import (
     continuous_energy,
@@ -736,6 +737,30 @@ def test_groups_do_not_hang_on_noise_or_on_the_cut():
         ]
         assert largest[0] > 0
         assert largest[1] == pytest.approx(largest[0], rel=0.03)
+
+
+@pytest.mark.parametrize("rate", [-4e-4, 4e-4])
+@pytest.mark.parametrize("offset", [0.0, 0.03])
+def test_a_group_whose_frequency_falls_focuses_where_and_when_its_waves_meet(rate, offset):
+    # exact: in deep water cg = g/(2 omega), so that the waves that pass the sensor at time t with
+    # frequency omega0 + offset + rate t meet where d t/d x = 2 rate/g x = -1
+    omega0, width = 2 * np.pi / 10, 150.0
+    t = np.arange(-1500, 1500, 0.5)
+    wave = 1e-3 * np.exp(-((t / width) ** 2) / 2)
+    wave = wave * np.cos((omega0 + offset) * t + rate * t**2 / 2)
+    envelope = free_envelope(wave, 0.5, omega0=omega0, depth=np.inf, start=-1500.0, margin=0.0)
+    (group,) = (g for g in group_content(envelope) if g.height > 1e-3)
+    assert group.chirp == pytest.approx(rate, rel=0.02)
+    assert group.soliton_share == 0  # far too gentle
+    if rate > 0:
+        assert np.isnan(group.focus_distance) and np.isnan(group.focus_time)
+        return
+    # (a Gaussian is narrowest a little before, by the diffraction of its own width)
+    spread = 1 / (1 + 1 / (width**2 * rate) ** 2)
+    distance = 9.81 / (2 * -rate) * spread
+    assert group.focus_distance == pytest.approx(distance, rel=0.05)
+    travel = distance * 2 * (omega0 + offset) / 9.81
+    assert group.focus_time - group.peak_time == pytest.approx(travel, rel=0.06)
 
 
 def test_groups_are_ordered_and_hold_their_peak():
