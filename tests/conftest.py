@@ -1,6 +1,11 @@
-"""What all tests share: the choice of slow tests."""
+"""What all tests share: the choice of slow tests, and that no test is timed."""
 
 import zlib
+
+from hypothesis import settings
+
+settings.register_profile("untimed")
+settings.load_profile("untimed")
 
 
 def pytest_addoption(parser):

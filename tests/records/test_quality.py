@@ -80,7 +80,7 @@ def test_a_big_wave_is_no_spike():
     st.floats(4.2, 40), st.floats(0.5, 20), st.floats(0, 2 * np.pi), st.floats(0.8, 1.6),
     st.floats(0.4, 2), st.sampled_from([0.001, 0.05, 1.0]), st.integers(0, 10**6),
 )  # fmt: skip
-@settings(max_examples=150, deadline=None)
+@settings(max_examples=150)
 def test_no_smooth_wave_of_any_height_is_a_spike(rate, crest, phase, tune, width, calm, seed):
     tp, hs = 9.0, 2.0
     dt = tp / rate
@@ -350,7 +350,7 @@ def test_drift_removal_leaves_a_level_sea_byte_for_byte():
 
 
 @given(st.integers(400, 1000), st.lists(st.floats(-50, 50), min_size=1, max_size=50))
-@settings(max_examples=20, deadline=None)
+@settings(max_examples=20)
 def test_the_chain_after_the_cut_knows_nothing_of_later_samples(n, later):
     x = sea(np.random.default_rng(22), n=1000)[:n]
     at = 0.5 * (n - 1)
@@ -363,7 +363,7 @@ def test_the_chain_after_the_cut_knows_nothing_of_later_samples(n, later):
 
 
 @given(st.data())
-@settings(max_examples=200, deadline=None)
+@settings(max_examples=200)
 def test_any_record_can_be_judged(data):
     n = data.draw(st.integers(2, 400))
     rng = np.random.default_rng(data.draw(st.integers(0, 10**6)))

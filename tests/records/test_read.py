@@ -79,7 +79,7 @@ def dialects(draw):
 
 
 @given(dialects())
-@settings(max_examples=200, deadline=None)
+@settings(max_examples=200)
 def test_every_dialect_gives_the_same_record(dialect):
     data, options, metres, dt, start, style = dialect
     record = read_text(data, **options)
@@ -109,7 +109,7 @@ LATER = st.lists(
     LATER,
     st.booleans(),
 )
-@settings(max_examples=200, deadline=None)
+@settings(max_examples=200)
 def test_later_rows_change_no_byte(n, first_value, later, calendar):
     def stamp(i):
         return f"2000-03-01T00:{i // 60:02d}:{i % 60:02d}Z" if calendar else f"{i}.0"
@@ -121,7 +121,7 @@ def test_later_rows_change_no_byte(n, first_value, later, calendar):
 
 
 @given(st.sampled_from(["abc", "inf", "1_0"]), LATER)
-@settings(max_examples=50, deadline=None)
+@settings(max_examples=50)
 def test_later_rows_change_no_error(bad, later):
     text = f"time,eta_m\n0.0,1\n1.0,{bad}\n2.0,2\n".encode()
     messages = []
@@ -210,7 +210,7 @@ def test_files_that_are_no_record_are_refused(tmp_path, monkeypatch):
 
 
 @given(st.binary(max_size=300))
-@settings(max_examples=300, deadline=None)
+@settings(max_examples=300)
 def test_garbage_raises_nothing_else(data):
     try:
         read_text(data)
@@ -219,7 +219,7 @@ def test_garbage_raises_nothing_else(data):
 
 
 @given(st.text(alphabet="0123456789.,;-+eE:T Z\n\t#naNtimes_m[]/", max_size=120))
-@settings(max_examples=200, deadline=None)
+@settings(max_examples=200)
 def test_almost_tables_raise_nothing_else(text):
     try:
         read_text("time_s,eta_m\n0,1\n" + text)
@@ -262,7 +262,6 @@ def test_record_from_arrays():
 
 
 @given(st.integers(2, 30), st.lists(st.floats(-9, 9), min_size=1, max_size=30), st.booleans())
-@settings(deadline=None)
 def test_later_samples_change_no_byte(n, later, with_times):
     early = np.sin(np.arange(n)).tolist()
 

@@ -157,7 +157,7 @@ def test_finite_depth_set_down_becomes_the_deep_one():
     assert finite == pytest.approx(deep, rel=0.03)
 
 
-@settings(max_examples=20, deadline=None)
+@settings(max_examples=20)
 @given(angle=st.floats(0, TURN), shift=st.integers(0, 255), depth=st.sampled_from([np.inf, 40.0]))
 def test_bound_waves_are_quadratic_and_have_no_origin(angle, shift, depth):
     # exact: zeta -> zeta e^{i angle} turns the sum part only; a shift in time shifts the result
@@ -454,7 +454,7 @@ def test_coverage_at_the_sensor_is_the_record_itself():
     np.testing.assert_allclose(found, [0, 1, 1, 1, 0])
 
 
-@settings(max_examples=30, deadline=None)
+@settings(max_examples=30)
 @given(
     distance=st.floats(1, 1e4),
     depth=st.sampled_from([np.inf, 50.0, 15.0]),

@@ -130,7 +130,7 @@ def test_waves_that_touch_a_gap_are_left_out():
         max_size=60,
     )
 )
-@settings(max_examples=300, deadline=None)
+@settings(max_examples=300)
 def test_waves_against_the_slow_twin(x):
     # independent code: a loop over crossings; zeros, ties and gaps included
     x = np.array(x)
@@ -141,7 +141,7 @@ def test_waves_against_the_slow_twin(x):
 
 
 @given(st.integers(0, 2**32 - 1), st.floats(1e-3, 1e3), st.floats(-1e4, 1e4), st.floats(0.01, 100))
-@settings(max_examples=40, deadline=None)
+@settings(max_examples=40)
 def test_waves_scale_and_shift(seed, scale, start, dt):
     # exact invariances of the definition
     x = random_sea(seed)
@@ -153,7 +153,7 @@ def test_waves_scale_and_shift(seed, scale, start, dt):
 
 
 @given(st.integers(0, 2**32 - 1))
-@settings(max_examples=40, deadline=None)
+@settings(max_examples=40)
 def test_waves_upside_down_and_backwards(seed):
     # exact: -x(-t) falls where x(t) falls, so the waves are the same with crest and trough changed
     x = random_sea(seed)
@@ -164,7 +164,7 @@ def test_waves_upside_down_and_backwards(seed):
 
 
 @given(st.integers(0, 2**32 - 1), st.integers(1, 300))
-@settings(max_examples=40, deadline=None)
+@settings(max_examples=40)
 def test_later_samples_change_no_earlier_wave(seed, cut):
     x = random_sea(seed)
     whole, part = zero_crossing_waves(x, 1.0), zero_crossing_waves(x[:-cut], 1.0)

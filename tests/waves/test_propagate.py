@@ -191,7 +191,7 @@ def test_a_weak_wave_beside_a_main_wave(one, two, stepper):
     assert shift("dysthe-pair") == pytest.approx(exact_pair_shift(one, two), rel=3e-3)
 
 
-@settings(max_examples=50, deadline=None)
+@settings(max_examples=50)
 @given(
     st.lists(st.floats(-0.7, 1.6), min_size=2, max_size=6, unique=True),
     st.randoms(use_true_random=False),
@@ -486,7 +486,7 @@ def test_shift_of_a_train_in_finite_depth(kh, x, equation):
 # ---- invariances -------------------------------------------------------------------------------
 
 
-@settings(max_examples=12, deadline=None)
+@settings(max_examples=12)
 @given(
     angle=st.floats(0, TURN),
     shift=st.integers(0, 127),
@@ -501,7 +501,7 @@ def test_phase_rotation_and_time_translation(angle, shift, equation, seed):
     np.testing.assert_allclose(moved, np.roll(plain, shift) * np.exp(1j * angle), atol=1e-11)
 
 
-@settings(max_examples=8, deadline=None)
+@settings(max_examples=8)
 @given(scale=st.floats(0.2, 5.0), equation=st.sampled_from(sorted(EQUATIONS)))
 def test_deep_water_knows_no_scale(scale, equation):
     # exact: in deep water only k0 A, omega0 t and k0 x appear

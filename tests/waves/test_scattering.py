@@ -237,7 +237,7 @@ def test_trace_formula_closes_on_a_sea():
     assert shares[1] > 0.997
 
 
-@settings(deadline=None, max_examples=15)
+@settings(max_examples=15)
 @given(
     st.floats(-0.8, 0.8),
     st.floats(0.5, 2.0),

@@ -101,7 +101,7 @@ def test_jonswap_normaliser(gamma, normaliser):
 
 
 @given(st.floats(1, 15), st.floats(0.1, 20), st.floats(0.5, 25))
-@settings(max_examples=25, deadline=None)
+@settings(max_examples=25)
 def test_jonswap_has_the_height_asked_for(gamma, hs, tp):
     # exact by definition, Hs = 4 sqrt(m0); adaptive quadrature of scipy as independent code
     def density(f):
@@ -193,7 +193,7 @@ def test_two_peaked_is_the_sum_of_its_systems():
 
 @pytest.mark.parametrize("name", SHAPES)
 @given(scale=st.floats(0.01, 100), stretch=st.floats(0.1, 10))
-@settings(max_examples=10, deadline=None)
+@settings(max_examples=10)
 def test_shapes_scale(name, scale, stretch):
     # exact: dimensional analysis, S = hs^2 tp F(f tp); no density at frequency 0
     f = np.linspace(0, 2, 50)
@@ -414,7 +414,7 @@ def test_sea_state_is_put_together_from_its_definitions():
 
 
 @given(seed=st.integers(0, 2**32 - 1), scale=st.floats(1e-3, 1e3), stretch=st.floats(0.05, 20))
-@settings(max_examples=15, deadline=None)
+@settings(max_examples=15)
 def test_sea_state_scales(seed, scale, stretch):
     # exact: dimensional analysis; numbers without a unit do not change, whatever the sign,
     # the mean level or the sense of time
