@@ -326,13 +326,13 @@ def _ablation_lines(place: str, ablation: dict) -> list[str]:
     lines = [
         f"{place}: largest wave >= {ablation['ratio']} Hs, by features used:",
         "  log skill pooled, ROC, and log skill by distance [wavelengths] and by coverage",
-        f"  {'':<22}{'pooled':<27}{'ROC':>6} " + "".join(f"{place:>9}" for place in places),
+        f"  {'':<22}{'pooled':<31}{'ROC':>6} " + "".join(f"{place:>9}" for place in places),
     ]
     for row in ablation["sets"]:
         skills = (row[part].get(place) for part in parts for place in columns[part])
         cells = "".join(f"{'-' if skill is None else f'{skill:.3f}':>9}" for skill in skills)
         lines.append(
-            f"  {row['features']:<22}{_interval(row['log_skill']):<27}{row['roc'][0]:>6.3f} {cells}"
+            f"  {row['features']:<22}{_interval(row['log_skill']):<31}{row['roc'][0]:>6.3f} {cells}"
         )
     lines += [
         f"  gain in log score from {row['from']!r} to {row['to']!r}: "

@@ -367,7 +367,7 @@ def test_verification_tables_show_counts_scores_and_what_could_not_be_scored():
     assert "too few events to score" in steep
     assert "here: largest wave >= 1.6 Hs, by features used" in text
     assert "noisy: largest wave >= 2 Hs, intervals" in text
-    assert "all                   0.65 (0.6 to 0.7)           0.980     0.710    0.270" in text
+    assert "all                   0.65 (0.6 to 0.7)               0.980     0.710    0.270" in text
     assert "gain in log score from 'a' to 'b': 0.02 (0.01 to 0.03)" in text
     assert "climatology  log skill 0.000, ROC 0.500; the model's gain 0.02 (0.01 to 0.03)" in text
     assert text.isascii()
