@@ -389,8 +389,8 @@ def _contour_count(function, rows, floor, top, columns, half):
     step = np.pi / (columns * function.dt)
     lines = function.on_lines(np.stack([floor, top], 1), columns, half, rows, len(function.parts))
     real = step * np.arange(-half, half + 1)
-    # arg a may change by the length of the record for each unit of eta: so close that no change of
-    # a turn less `_PHASE_STEP` passes unseen, and closer towards the floor
+    # arg a may change by the length of the record for each unit of eta: points so close that it
+    # changes by 3 at most, for a whole turn would pass unseen, and closer towards the floor
     even = np.linspace(0, 1, 2 + int(function.n * function.dt * top.max() / 3))[1:-1]
     eta = floor[:, None] * (top / floor)[:, None] ** np.linspace(0, 1, 16)[1:-1]
     eta = np.sort(np.hstack([eta, floor[:, None] + (top - floor)[:, None] * even]), axis=1)
@@ -1019,9 +1019,17 @@ def _rise(x):
     return 0.5 - 0.5 * np.cos(np.pi * np.clip(x, 0, 1))
 
 
-def _hump(x):
-    """Half a cosine from 0 at x <= 0 to 1 at x = 1/2 and back to 0 at x >= 1."""
-    return _rise(2 * x) * _rise(2 - 2 * x)
+def _windows(q, dt, centres, half_width, floor, weight):
+    """Scaled times of the middles of windows, and their samples for the fourth order.
+
+    `weight` maps places in a window, 0 to 1 from end to end, to the weight of q.
+    """
+    q = _checked(q, dt, floor)
+    centres = np.atleast_1d(np.asarray(centres, float))
+    length = max(4, round(2 * half_width / dt))
+    first = np.rint(centres / dt - length / 2 + 0.5).astype(int)
+    levels = _cut(_levels(q[None], 4), first, length, lambda position: weight(position / length))
+    return (first + (length - 1) / 2) * dt, levels
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -1089,16 +1097,9 @@ def windowed_content(q, dt, centres, *, half_width=12 * np.pi, floor=0.02) -> Wi
     >>> content.count.tolist(), np.round(content.largest, 2).tolist()
     ([0, 1], [0.0, 0.1])
     """
-    q = _checked(q, dt, floor)
-    centres = np.atleast_1d(np.asarray(centres, float))
-    length = max(4, round(2 * half_width / dt))
-    first = np.rint(centres / dt - length / 2 + 0.5).astype(int)
-    edge = length / 8
-
-    def taper(position):
-        return _rise(position / edge) * _rise((length - position) / edge)
-
-    levels = _cut(_levels(q[None], 4), first, length, taper)
+    _, levels = _windows(
+        q, dt, centres, half_width, floor, lambda x: _rise(8 * x) * _rise(8 - 8 * x)
+    )
     eigenvalues = _eigenvalues(levels, dt, floor)
     imaginary = [x.imag for x in eigenvalues]
     energy = (np.abs(levels[1]) ** 2).sum(axis=1) * dt
@@ -1183,24 +1184,26 @@ def windowed_energy(q, dt, centres, *, half_width, floor=0.02) -> WindowedEnergy
     >>> round(float(total), 2), round(float(found.energy[0] @ found.speed / total), 2)
     (0.4, 0.2)
     """
-    q = _checked(q, dt, floor)
-    centres = np.atleast_1d(np.asarray(centres, float))
-    length = max(4, round(2 * half_width / dt))
-    first = np.rint(centres / dt - length / 2 + 0.5).astype(int)
-    levels = _cut(_levels(q[None], 4), first, length, lambda position: _hump(position / length))
-    columns = _fast_size(4 * length)
-    half = columns // 2
-    everyone = np.arange(centres.size)
-    a = _Jost(levels, dt).on_lines(np.zeros((centres.size, 1)), columns, half, everyone, 2)[:, 0]
-    step = np.pi / (columns * dt)
-    # |a| <= 1 on the real axis; where there is no signal rounding and extrapolation may exceed it
-    energy = -2 / np.pi * step * np.log(np.clip(np.abs(a), 1e-300, 1.0))
-    for row, values in enumerate(_eigenvalues(levels, dt, floor)):
-        place = np.clip(values.real / step + half, 0, 2 * half)
-        low = np.minimum(place.astype(int), 2 * half - 1)
-        np.add.at(energy[row], low, 4 * values.imag * (low + 1 - place))
-        np.add.at(energy[row], low + 1, 4 * values.imag * (place - low))
-    middle = (first + (length - 1) / 2) * dt
+    middle, levels = _windows(
+        q, dt, centres, half_width, floor, lambda x: _rise(2 * x) * _rise(2 - 2 * x)
+    )
+    columns = _fast_size(4 * levels[1].shape[1])
+    half, step = columns // 2, np.pi / (columns * dt)
+    energy = np.zeros((middle.size, 2 * half + 1))
+    peak = _peak(levels)
+    live = np.flatnonzero(peak > 0)
+    if live.size:
+        levels = {parts: values[live] for parts, values in levels.items()}
+        function = _Jost(levels, dt)
+        axis = np.zeros((live.size, 1))
+        a = function.on_lines(axis, columns, half, np.arange(live.size), len(levels))[:, 0]
+        # |a| <= 1 on the real axis; rounding and extrapolation may exceed it beyond the signal
+        energy[live] = -2 / np.pi * step * np.log(np.clip(np.abs(a), 1e-300, 1.0))
+        for row, zeros in zip(live, _zeros(function, levels, peak[live], floor), strict=True):
+            place = np.clip(zeros.real / step + half, 0, 2 * half)
+            low = np.minimum(place.astype(int), 2 * half - 1)
+            np.add.at(energy[row], low, 4 * zeros.imag * (low + 1 - place))
+            np.add.at(energy[row], low + 1, 4 * zeros.imag * (place - low))
     return WindowedEnergy(middle, -4 * step * np.arange(-half, half + 1), energy)
 
 
