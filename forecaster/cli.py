@@ -4,7 +4,7 @@ Answers go to standard output, everything else to standard error.  Each command 
 needs when it runs.
 
 >>> main(["schema", "--help"])  # doctest: +ELLIPSIS
-Usage: trikymia schema [OPTIONS]
+Usage: trikymia schema [OPTIONS] ...
 ...
 0
 """
@@ -581,11 +581,12 @@ def models(name):
 
 
 @trikymia.command()
-def schema():
-    """Print the JSON Schema of the documents of `trikymia score`."""
-    from forecaster.serialize import dumps, forecast_schema
+@click.argument("kind", type=click.Choice(("forecast", "check")), default="forecast")
+def schema(kind):
+    """Print the JSON Schema of the documents of `trikymia score`, or of `trikymia check`."""
+    from forecaster.serialize import check_schema, dumps, forecast_schema
 
-    click.echo(dumps(forecast_schema(), indent=2))
+    click.echo(dumps({"forecast": forecast_schema, "check": check_schema}[kind](), indent=2))
 
 
 @trikymia.command()

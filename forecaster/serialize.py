@@ -349,6 +349,14 @@ PROGRAM = (
     "the program that answered",
 )
 
+_CHECK_BODY = (
+    ("record", RECORD, "the record that was used"),
+    ("quality", QUALITY, "quality of the record"),
+    ("sea_state", _or_null(SEA_STATE), "of the record; null if quality failed"),
+    ("waves", _or_null(WAVES), "of the record; null if quality failed"),
+    ("scattering", _or_null(SCATTERING), "its scattering spectrum; null if not asked for"),
+)
+
 _BODY: tuple[Row, ...] = (
     ("record", "record", RECORD, "the record that was used"),
     ("quality", "quality", QUALITY, "quality of the record"),
@@ -479,14 +487,32 @@ def check_document(
         Null in the document where it was not asked for or could not be given.
     program_version : str
     """
+    told = (record, quality, sea_state, waves, scattering)
+    body = {
+        key: kind.write(value, record.calendar)
+        for (key, kind, _), value in zip(_CHECK_BODY, told, strict=True)
+    }
+    return {"schema": CHECK_SCHEMA, **body, "program": {"version": program_version}}
+
+
+def check_schema() -> dict[str, Any]:
+    """JSON Schema (draft 2020-12) of ``trikymia.check/1``.
+
+    Examples
+    --------
+    >>> check_schema()["properties"]["waves"]["description"]
+    'of the record; null if quality failed'
+    """
+    rows = [
+        ("schema", {"const": CHECK_SCHEMA}, "name and version of this format"),
+        *((key, kind.schema, meaning) for key, kind, meaning in _CHECK_BODY),
+        (PROGRAM[0], PROGRAM[2].schema, PROGRAM[3]),
+    ]
     return {
-        "schema": CHECK_SCHEMA,
-        "record": RECORD.write(record, record.calendar),
-        "quality": QUALITY.write(quality, record.calendar),
-        "sea_state": _or_null(SEA_STATE).write(sea_state, record.calendar),
-        "waves": _or_null(WAVES).write(waves, record.calendar),
-        "scattering": _or_null(SCATTERING).write(scattering, record.calendar),
-        "program": {"version": program_version},
+        "$schema": _DIALECT,
+        "title": CHECK_SCHEMA,
+        "description": "What one record holds. Readers must accept keys that are not listed here.",
+        **_object_schema(rows),
     }
 
 

@@ -15,7 +15,7 @@ import pytest
 
 from forecaster import cli, datatypes, errors, forecasting
 from forecaster.learning import ensemble, registry
-from forecaster.serialize import forecast_schema
+from forecaster.serialize import check_schema, forecast_schema
 from tests import tiny_model
 from tests.hand_built import BAD, forecast, unanswered
 from tests.json_schema import problems
@@ -287,6 +287,8 @@ def test_every_command_explains_itself_and_every_option(name, capsys):
 def test_schema_is_printed_whole(capsys):
     assert cli.main(["schema"]) == 0
     assert json.loads(capsys.readouterr().out) == forecast_schema()
+    assert cli.main(["schema", "check"]) == 0
+    assert json.loads(capsys.readouterr().out) == check_schema()
 
 
 def test_version(capsys):

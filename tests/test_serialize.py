@@ -193,6 +193,15 @@ def test_check_document():
     assert document["sea_state"]["hs_m"] == 4.2
     failed = serialize.check_document(record(), BAD, None, None, program_version="")
     assert failed["sea_state"] is None and failed["waves"] is None
+    whole = serialize.check_document(
+        record(), GOOD, SEA, WAVES, scattering_spectrum(record(), SEA), program_version="0.1.0"
+    )
+    assert whole["scattering"]["groups"]
+    schema = serialize.check_schema()
+    for one in (document, failed, whole):
+        assert problems(json.loads(serialize.dumps(one)), schema) == []
+    assert problems({**document, "schema": "trikymia.forecast/1"}, schema)
+    assert problems({**document, "waves": {}}, schema)
 
 
 @pytest.mark.parametrize("calendar", [True, False])
