@@ -24,9 +24,13 @@ from scipy.stats import spearmanr
 
 from forecaster.datatypes import Record
 from forecaster.learning.ensemble import PEAK_PERIOD
-from forecaster.learning.events import INTERVAL_PERIODS, interval_edges, outcomes
+from forecaster.learning.events import (
+    HORIZON_COVERAGE,
+    INTERVAL_PERIODS,
+    interval_edges,
+    outcomes,
+)
 from forecaster.learning.features import FLUX_WINDOWS, Scene, first_look, scattering_content
-from forecaster.learning.train import HORIZON_COVERAGE
 from forecaster.waves.scattering import scaled_envelope, windowed_energy
 
 DISTANCES = (2.5, 5.0, 10.0, 20.0, 30.0)

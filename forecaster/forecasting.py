@@ -28,7 +28,7 @@ from forecaster.datatypes import (
 )
 from forecaster.errors import InputError, OutsideDomain, QualityError
 from forecaster.learning.domain import BOUNDING, assess
-from forecaster.learning.events import INTERVAL_PERIODS, interval_edges
+from forecaster.learning.events import HORIZON_COVERAGE, INTERVAL_PERIODS, interval_edges
 from forecaster.learning.features import (
     FEATURES,
     FirstLook,
@@ -39,7 +39,6 @@ from forecaster.learning.features import (
 )
 from forecaster.learning.model import CRITERIA, Model, interval_90
 from forecaster.learning.registry import load_model
-from forecaster.learning.train import HORIZON_COVERAGE
 from forecaster.records import read as reading
 from forecaster.records.quality import check_quality, peak_period, remove_drift, without_spikes
 from forecaster.serialize import program_version

@@ -5,12 +5,12 @@ from __future__ import annotations
 import numpy as np
 
 from forecaster.datatypes import Domain, SeaState
+from forecaster.learning.events import HORIZON_COVERAGE
 from forecaster.learning.features import FEATURES
+from forecaster.records.quality import COARSEST
 
 SPREAD_INSIDE, SPREAD_EDGE = 5.0, 10.0  # deg: a long-crested run loses the sea beyond
 KPH_INSIDE, KPH_EDGE = 15.0, 5.0  # the model is taught in deep water
-LEAST_SAMPLES = 4.0  # per peak period: coarser, a record has no envelope
-SEEN = 0.5  # coverage from which an interval is forecast from its own waves
 TANK_SENSOR_WORDS = "a flume or basin record is long-crested when its spread is given as 0"
 _WORSE = {"inside": 0, "edge": 1, "outside": 2}
 # Features whose taught range bounds the domain: up to which share of the range beyond it a value
@@ -110,17 +110,16 @@ def _depth(kph):
 
 def _sampling(samples_per_period):
     value = float(samples_per_period.min())
-    if value >= LEAST_SAMPLES:
+    if value >= COARSEST:
         return "inside", ""
     return "outside", (
-        f"{value:.3g} samples per peak period: at least {LEAST_SAMPLES:g} are needed to follow "
-        "the waves"
+        f"{value:.3g} samples per peak period: at least {COARSEST:g} are needed to follow the waves"
     )
 
 
 def _seen(coverage):
     """A period that the record hardly tells of is answered for by the taught seas as a whole."""
-    unseen = int(np.count_nonzero(coverage < SEEN))
+    unseen = int(np.count_nonzero(coverage < HORIZON_COVERAGE))
     if 2 * unseen <= coverage.size:
         return "inside", ""
     return "edge", (

@@ -14,6 +14,7 @@ from forecaster.waves.heights import interval_maxima
 INTERVAL_PERIODS = 4.0
 HEIGHT_RATIOS = (0.6, 2.8)  # k asked of the height model
 CREST_RATIOS = (0.35, 1.75)  # k asked of the crest model
+HORIZON_COVERAGE = 0.5  # from which an interval is forecast from its own waves
 EXTREME_HEIGHT = 2.0
 EXTREME_CREST = 1.25
 

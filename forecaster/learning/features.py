@@ -16,7 +16,7 @@ import numpy as np
 
 from forecaster.datatypes import Envelope, Record, SeaState, Spectrum, Waves
 from forecaster.learning.events import INTERVAL_PERIODS
-from forecaster.waves.envelope import FREE_BAND, covered, elevation_of, free_envelope
+from forecaster.waves.envelope import FREE_BAND, covered, elevation_of, record_envelope
 from forecaster.waves.heights import zero_crossing_waves
 from forecaster.waves.linear import group_velocity
 from forecaster.waves.propagate import ForwardRun, phase_coherence
@@ -175,20 +175,8 @@ def _track(envelope: Envelope) -> Track:
 def run_envelope(record: Record, sea: SeaState, reach: float) -> Envelope:
     """Free-wave envelope of a record with enough empty time for a run over `reach` metres."""
     wavelengths = reach * sea.kp / (2 * np.pi)
-    return _free_envelope(
-        record, sea, (MARGIN_PERIODS[0] + MARGIN_PERIODS[1] * wavelengths) * sea.tp
-    )
-
-
-def _free_envelope(record: Record, sea: SeaState, margin: float) -> Envelope:
-    return free_envelope(
-        record.elevation,
-        record.dt,
-        omega0=2 * np.pi / sea.tp,
-        depth=record.depth,
-        start=record.start,
-        margin=margin,
-    )
+    margin = (MARGIN_PERIODS[0] + MARGIN_PERIODS[1] * wavelengths) * sea.tp
+    return record_envelope(record, sea, margin=margin)
 
 
 def scattering_content(record: Record, sea: SeaState) -> Content:
@@ -199,7 +187,7 @@ def scattering_content(record: Record, sea: SeaState) -> Content:
     NumericsError
         If the eigenvalues found are not those that the argument principle counts.
     """
-    envelope = _free_envelope(record, sea, 0.0)
+    envelope = record_envelope(record, sea, margin=0.0)
     q, step = scaled_envelope(envelope)
     period = 2 * np.pi / envelope.omega0
 
@@ -222,7 +210,7 @@ def scattering_content(record: Record, sea: SeaState) -> Content:
         },
         eigenvalues=whole,
         locations=envelope.start + located / envelope.omega0,
-        periodic=periodic_modes(q, step, unit=soliton_unit(envelope, sea) or 1.0, order=4),
+        periodic=periodic_modes(q, step, unit=soliton_unit(envelope, sea), order=4),
         scale=float(np.sqrt(square.mean())),
         action=square.sum() * step,
     )
@@ -348,6 +336,22 @@ class Scene:
         sea = self.ahead.sea
         return self.distance / float(group_velocity(2 * np.pi / sea.tp, sea.depth))
 
+    def _inside(self, times, *, widen=0.0, shift=0):
+        """(m, n) whether each of n times [s] falls in each interval.
+
+        The interval is widened by `widen` peak periods at both ends and moved by `shift` intervals.
+        """
+        tp = self.ahead.sea.tp
+        move, slack = shift * INTERVAL_PERIODS * tp, widen * tp
+        low, high = self.edges[:-1, None] + move - slack, self.edges[1:, None] + move + slack
+        return (times >= low) & (times < high)
+
+    def _arrival(self, sent, speed):
+        """Time [s] at the target of what left the sensor at `sent` [s], scaled speed dT/dX."""
+        envelope = self.ahead.content.envelope
+        late = speed * (self.distance / evolution_scale(envelope)) / envelope.omega0
+        return sent + self.travel_time + late
+
     def ranked_wave(self, track, quantity, *, widen=0.0, shift=0, rank=1):
         """(m,) `rank`-th largest height or crest [Hs] with its crest in each interval.
 
@@ -358,11 +362,7 @@ class Scene:
         values = getattr(waves, quantity)
         if values.size == 0:
             return np.zeros(self.count)
-        move = shift * INTERVAL_PERIODS * sea.tp
-        low = self.edges[:-1] + move - widen * sea.tp
-        high = self.edges[1:] + move + widen * sea.tp
-        inside = (waves.crest_time >= low[:, None]) & (waves.crest_time < high[:, None])
-        found = np.where(inside, values, 0.0)
+        found = np.where(self._inside(waves.crest_time, widen=widen, shift=shift), values, 0.0)
         if rank == 1:
             return found.max(axis=1) / sea.hs
         if values.size < rank:
@@ -389,11 +389,8 @@ class Scene:
         `TIMING_PERIODS`; the strongest has the largest Im of an eigenvalue.
         """
         if "group" not in self._memory:
-            content, slack = self.ahead.content, TIMING_PERIODS * self.ahead.sea.tp
-            arrival = content.centres + self.travel_time
-            inside = (arrival >= self.edges[:-1, None] - slack) & (
-                arrival < self.edges[1:, None] + slack
-            )
+            content = self.ahead.content
+            inside = self._inside(content.centres + self.travel_time, widen=TIMING_PERIODS)
             strength = np.where(inside, content.windows.largest, -1.0)
             best = strength.argmax(axis=1)
             self._memory["group"] = np.where(inside.any(axis=1), best, -1)
@@ -433,9 +430,8 @@ class Scene:
         if key not in self._memory:
             content, tp = self.ahead.content, self.ahead.sea.tp
             envelope, sent = content.envelope, content.flux[window]
-            late = sent.speed * (self.distance / evolution_scale(envelope))
-            arrival = (sent.centre[:, None] + late) / envelope.omega0
-            arrival += envelope.start + self.travel_time
+            left = envelope.start + sent.centre / envelope.omega0
+            arrival = self._arrival(left[:, None], sent.speed)
             width = FLUX_BIN_PERIODS * tp
             reach = int(4 * FLUX_SMOOTHING_PERIODS / FLUX_BIN_PERIODS)
             room = FLUX_NEIGHBOUR_PERIODS * tp + (reach + 1) * width
@@ -473,16 +469,11 @@ class Scene:
 
         In the interval widened by `TIMING_PERIODS`.
         """
-        content, envelope = self.ahead.content, self.ahead.content.envelope
-        slack = TIMING_PERIODS * self.ahead.sea.tp
-        late = -4 * content.eigenvalues.real * (self.distance / evolution_scale(envelope))
-        arrival = content.locations + self.travel_time + late / envelope.omega0
-        inside = (arrival >= self.edges[:-1, None] - slack) & (
-            arrival < self.edges[1:, None] + slack
-        )
-        return np.where(inside, content.eigenvalues.imag, 0.0).max(axis=1, initial=0.0) / (
-            content.scale
-        )
+        content = self.ahead.content
+        arrival = self._arrival(content.locations, -4 * content.eigenvalues.real)
+        inside = self._inside(arrival, widen=TIMING_PERIODS)
+        found = np.where(inside, content.eigenvalues.imag, 0.0)
+        return found.max(axis=1, initial=0.0) / content.scale
 
     def _shares(self):
         """Places in time and, at each, shares of the energy: covered, known in phase.
@@ -611,14 +602,6 @@ def _content(function):
     return lambda scene: function(scene.ahead.content)
 
 
-def _arriving(window, **options):
-    return lambda scene: scene.arriving_height(window, **options)
-
-
-def _largest_arriving(window):
-    return lambda scene: scene.largest_arriving(window)
-
-
 _SCATTERING = "Zakharov-Shabat spectrum of the feeding window (waves.scattering)"
 _WHOLE = "Zakharov-Shabat spectrum of the record (waves.scattering)"
 _PAIR = "forward run with pair dispersion (waves.propagate)"
@@ -627,7 +610,21 @@ _LINEAR = "linear forward run (waves.propagate)"
 _FLUX = "energy at the speeds of the scattering spectrum (waves.scattering)"
 _PERIODIC = "main spectrum of the record repeated for ever (waves.scattering_spectrum)"
 _WIDE = {"widen": TIMING_PERIODS}
-_BEFORE, _AFTER = {"later": -FLUX_NEIGHBOUR_PERIODS}, {"later": FLUX_NEIGHBOUR_PERIODS}
+
+
+def _arriving_features(window):
+    """Columns of what arrives of the energy of one length of windows."""
+    functions = {
+        "": lambda scene: scene.arriving_height(window),
+        "_largest": lambda scene: scene.largest_arriving(window),
+        "_before": lambda scene: scene.arriving_height(window, later=-FLUX_NEIGHBOUR_PERIODS),
+        "_after": lambda scene: scene.arriving_height(window, later=FLUX_NEIGHBOUR_PERIODS),
+    }
+    return {
+        f"arriving_{window}{place}": Feature(function, "Hs", _FLUX, "wave energy on its way here")
+        for place, function in functions.items()
+    }
+
 
 FEATURES: dict[str, Feature] = {
     # the sea
@@ -773,28 +770,8 @@ FEATURES: dict[str, Feature] = {
     "arriving_soliton": Feature(
         Scene.arriving_soliton, "rms q", _WHOLE, "wave energy on its way here"
     ),
-    "arriving_short": Feature(
-        _arriving("short"), "Hs", _FLUX, "wave energy on its way here"
-    ),
-    "arriving_short_largest": Feature(
-        _largest_arriving("short"), "Hs", _FLUX, "wave energy on its way here"
-    ),
-    "arriving_short_before": Feature(
-        _arriving("short", **_BEFORE), "Hs", _FLUX, "wave energy on its way here"
-    ),
-    "arriving_short_after": Feature(
-        _arriving("short", **_AFTER), "Hs", _FLUX, "wave energy on its way here"
-    ),
-    "arriving_long": Feature(_arriving("long"), "Hs", _FLUX, "wave energy on its way here"),
-    "arriving_long_largest": Feature(
-        _largest_arriving("long"), "Hs", _FLUX, "wave energy on its way here"
-    ),
-    "arriving_long_before": Feature(
-        _arriving("long", **_BEFORE), "Hs", _FLUX, "wave energy on its way here"
-    ),
-    "arriving_long_after": Feature(
-        _arriving("long", **_AFTER), "Hs", _FLUX, "wave energy on its way here"
-    ),
+    **_arriving_features("short"),
+    **_arriving_features("long"),
 }  # fmt: skip
 
 

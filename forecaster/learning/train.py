@@ -10,7 +10,7 @@ from scipy.special import expit
 from forecaster.datatypes import ModelIdentity
 from forecaster.errors import InputError, NumericsError
 from forecaster.learning.dataset import Dataset
-from forecaster.learning.events import EXTREME_HEIGHT
+from forecaster.learning.events import EXTREME_HEIGHT, HORIZON_COVERAGE
 from forecaster.learning.model import (
     CRITERIA,
     MARGINS,
@@ -25,7 +25,6 @@ from forecaster.learning.model import (
 from forecaster.settings import TrainSettings
 
 CALIBRATION_RATIOS = {"height": (1.0, 1.2, 1.4, 1.6, 1.8, 2.0, 2.2), "crest": (0.7, 0.9, 1.1, 1.25)}
-HORIZON_COVERAGE = 0.5
 ROUNDING = 1e-5  # in log odds, of leaves in single precision
 _BINS = 200
 _NEWTON_STEPS = 40

@@ -13,6 +13,7 @@ from itertools import pairwise
 import numpy as np
 
 from forecaster.learning.dataset import PLAIN_NAMES, Dataset
+from forecaster.learning.events import HORIZON_COVERAGE
 from forecaster.learning.features import WAVES_PER_INTERVAL
 from forecaster.learning.model import Model
 from forecaster.learning.scores import (
@@ -29,7 +30,7 @@ from forecaster.learning.scores import (
     reliability_curve,
     roc_area,
 )
-from forecaster.learning.train import HORIZON_COVERAGE, fit, horizon_groups, shown_rows
+from forecaster.learning.train import fit, horizon_groups, shown_rows
 from forecaster.settings import TrainSettings
 from forecaster.waves.heights import (
     excess_kurtosis_from_bfi,
@@ -279,9 +280,10 @@ def ablation(
     plain = {
         place: _with_plain_run(rows) for place, rows in cases.items() if knows_plain_run(rows).all()
     }
-    whole = (ABLATIONS, taught, cases)
-    beside_dysthe = (PLAIN_ABLATIONS, _with_plain_run(taught), plain)
-    for ablations, teach, asked in (whole, beside_dysthe) if plain else (whole,):
+    rounds = [(ABLATIONS, taught, cases)]
+    if plain:
+        rounds.append((PLAIN_ABLATIONS, _with_plain_run(taught), plain))
+    for ablations, teach, asked in rounds:
         for label, parts in ablations.items():
             progress(f"ablation: {label}")
             names = tuple(name for part in parts for name in FEATURE_SETS[part])

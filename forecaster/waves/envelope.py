@@ -23,7 +23,7 @@ import numpy as np
 from scipy import fft
 from scipy.linalg import solve_toeplitz
 
-from forecaster.datatypes import Envelope
+from forecaster.datatypes import Envelope, Record, SeaState
 from forecaster.errors import InputError
 from forecaster.waves.linear import GRAVITY, group_ratio, group_velocity, wavenumber
 
@@ -133,6 +133,25 @@ class BoundWaves:
             return total + fft.ifft(self._difference * intensity, axis=-1).real
         cross = fft.fft((kappa * zeta.conj()).imag, axis=-1)
         return total + fft.ifft(-0.5j * self._sign * cross, axis=-1).real
+
+
+def record_envelope(record: Record, sea: SeaState, *, margin: float) -> Envelope:
+    """`free_envelope` of a record about the peak of its sea, with `margin` seconds at either end.
+
+    >>> wave = np.cos(0.6 * np.arange(0, 600, 0.5))
+    >>> from forecaster.waves.spectrum import sea_state
+    >>> found = record_envelope(Record(wave, dt=0.5), sea_state(wave, 0.5), margin=0.0)
+    >>> bool(abs(found.omega0 - 0.6) < 0.01)
+    True
+    """
+    return free_envelope(
+        record.elevation,
+        record.dt,
+        omega0=2 * np.pi / sea.tp,
+        depth=record.depth,
+        start=record.start,
+        margin=margin,
+    )
 
 
 def free_envelope(elevation, dt, *, omega0, depth=np.inf, start=0.0, margin=None) -> Envelope:

@@ -17,7 +17,7 @@ from math import isfinite
 import numpy as np
 
 from forecaster.datatypes import Envelope, Record, SeaState, WaveGroup
-from forecaster.waves.envelope import free_envelope
+from forecaster.waves.envelope import record_envelope
 from forecaster.waves.linear import group_velocity
 from forecaster.waves.scattering import (
     continuous_energy,
@@ -222,7 +222,8 @@ def periodic_modes(q, dt, *, unit: float, order: int = 6) -> PeriodicModes:
     q, dt, order
         As for `scattering.periodic_spectrum`.
     unit : float
-        Distance in the plane of eigenvalues that counts as 1, such as `soliton_unit`.
+        Distance in the plane of eigenvalues that counts as 1, such as `soliton_unit`; may be 0
+        where q is.
 
     Raises
     ------
@@ -288,14 +289,7 @@ def scattering_spectrum(record: Record, sea: SeaState) -> ScatteringSpectrum:
     >>> len(found.eigenvalues) > 0, bool(abs(found.eigenvalues[0].time - 700) < 15)
     (True, True)
     """
-    envelope = free_envelope(
-        record.elevation,
-        record.dt,
-        omega0=2 * np.pi / sea.tp,
-        depth=record.depth,
-        start=record.start,
-        margin=0.0,
-    )
+    envelope = record_envelope(record, sea, margin=0.0)
     q, dt = scaled_envelope(envelope)
     unit = soliton_unit(envelope, sea)
     values = discrete_spectrum(q, dt)
@@ -304,8 +298,7 @@ def scattering_spectrum(record: Record, sea: SeaState) -> ScatteringSpectrum:
     speed = float(group_velocity(envelope.omega0, envelope.depth))
     slowness = 1 / speed - 4 * values.real / (envelope.omega0 * evolution_scale(envelope))
 
-    # in too shallow a water there are no eigenvalues to be measured
-    ratios = values.imag / unit if unit else values.imag
+    ratios = values.imag / unit  # none in too shallow a water, where the unit is 0
     located = tuple(
         LocatedEigenvalue(
             value=complex(value),
@@ -325,7 +318,7 @@ def scattering_spectrum(record: Record, sea: SeaState) -> ScatteringSpectrum:
         groups=group_content(envelope),
         discrete_share=4 * float(values.imag.sum()) / energy if energy else 0.0,
         continuous_share=continuous_energy(q, dt) / energy if energy else 0.0,
-        periodic=periodic_modes(q, dt, unit=unit or 1.0),
+        periodic=periodic_modes(q, dt, unit=unit),
         drift=drift,
         group_drift=group_drift,
         remarks=_remarks(sea, drift, group_drift, focuses=unit > 0),
